@@ -1,0 +1,110 @@
+"""The patient's envelope as a set-up file describes it."""
+
+from dataclasses import dataclass
+from typing import Final, Literal, get_args
+
+from app.files.dicom import read_external_contour, read_plan_isocentres, read_plan_patient_position
+from app.files.reading import Table
+from app.files.shapes import mesh_of
+from app.files.values import LARGEST_MM, Limits
+from app.files.wording import printable
+from geometry.body import SIZES, Body
+from geometry.frames import PATIENT_POSITIONS
+from geometry.setup import Landmark, Surface
+from geometry.solids import Solid
+
+Source = Literal["body", "mesh", "structure set"]
+Arm = Literal["at the side", "on the chest", "above the head"]
+Build = Literal["man", "woman", "mean"]
+Legs = Literal["together", "apart"]
+Point = tuple[float, float, float]
+
+LANDMARKS: Final[tuple[Landmark, ...]] = get_args(Landmark)
+_SOURCES: Final[tuple[Source, ...]] = get_args(Source)
+_ARMS: Final[tuple[Arm, ...]] = get_args(Arm)
+_BUILDS: Final[tuple[Build, ...]] = ("mean", "man", "woman")
+_LEGS: Final[tuple[Legs, ...]] = get_args(Legs)
+_ON_BACK_OR_FRONT: Final = ("HFS", "HFP", "FFS", "FFP")
+_POSITIVE: Final = Limits(0.0, LARGEST_MM, above=True)
+
+
+@dataclass(frozen=True)
+class Patient:
+    """What [patient] says. `envelope` is None after a fault; `plan_isocentres_mm` is empty where no plan is named."""
+
+    position: str
+    envelope: Body | Surface | None
+    plan_isocentres_mm: tuple[Point, ...] = ()
+
+
+def patient_of(top: Table) -> Patient:
+    """Return what [patient] says, files that it names included."""
+    table = top.required_table("patient")
+    position = table.choice("position", PATIENT_POSITIONS)
+    source = table.choice("source", _SOURCES)
+    if table.raw("source") != source:
+        table.ignore_rest()
+        return Patient(position, None)
+    if source == "body":
+        return Patient(position, _body(table, position))
+    return _imported(table, position, source)
+
+
+def _body(table: Table, position: str) -> Body | None:
+    if position not in _ON_BACK_OR_FRONT:
+        table.fault("position", f"'{position}' with a body made from sizes", f"one of {', '.join(_ON_BACK_OR_FRONT)}")
+    stature_mm = table.number("stature_mm", _POSITIVE)
+    mass_kg = table.optional_number("mass_kg", _POSITIVE)
+    build = table.choice("build", _BUILDS, default="mean")
+    sizes = _sizes(table)
+    arm_left = table.choice("arm_left", _ARMS, default="at the side")
+    arm_right = table.choice("arm_right", _ARMS, default="at the side")
+    legs = table.choice("legs", _LEGS, default="together")
+    slope_deg = table.number("slope_deg", Limits(-90.0, 90.0), default=0.0)
+    prone = position.endswith("P")
+    return table.built(lambda: Body(stature_mm, mass_kg, build, sizes, arm_left, arm_right, legs, slope_deg, prone))
+
+
+def _sizes(table: Table) -> tuple[tuple[str, float], ...]:
+    """Return the sizes that were measured, in the order of their names' list."""
+    sizes = table.table("sizes")
+    if sizes is None:
+        return ()
+    return tuple((name, sizes.number(name, _POSITIVE)) for name in SIZES if sizes.has(name))
+
+
+def _imported(table: Table, position: str, source: Source) -> Patient:
+    landmarks = _landmarks(table)
+    isocentres = _plan(table, position)
+    if source == "mesh":
+        solid = mesh_of(table)
+        words = "closed surface mesh"
+    else:
+        solid = _contours(table)
+        words = "external contour of a structure set"
+    surface = None if solid is None else table.built(lambda: Surface(solid, words, landmarks))
+    return Patient(position, surface, isocentres)
+
+
+def _contours(table: Table) -> Solid | None:
+    path = table.file("file")
+    roi = table.optional_text("roi")
+    return table.attempted(lambda: read_external_contour(path, roi)) if path is not None else None
+
+
+def _landmarks(table: Table) -> tuple[tuple[Landmark, Point], ...]:
+    given = table.table("landmarks")
+    if given is None:
+        return ()
+    return tuple((name, given.vector(name)) for name in LANDMARKS if given.has(name))
+
+
+def _plan(table: Table, position: str) -> tuple[Point, ...]:
+    """Return the isocentres of the plan that is named, if one is; its patient position has to be the set-up's."""
+    path = table.file("plan") if table.has("plan") else None
+    if path is None:
+        return ()
+    planned = table.attempted(lambda: read_plan_patient_position(path))
+    if planned is not None and planned != position:
+        table.fault("plan", f"a plan for patient position '{printable(planned)}'", f"'{position}', as position says")
+    return table.attempted(lambda: read_plan_isocentres(path)) or ()

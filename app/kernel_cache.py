@@ -1,0 +1,50 @@
+"""Where compiled kernels are kept from one start to the next."""
+
+import atexit
+import os
+import shutil
+import tempfile
+from collections.abc import Sequence
+from pathlib import Path
+
+import platformdirs
+
+import geometry
+
+_VARIABLE = "NUMBA_CACHE_DIR"
+
+
+def choose_kernel_cache() -> None:
+    """Tell numba where to keep what it compiles. To be called before numba is first imported.
+
+    Beside the source, where that can be written; else in the user's cache folder; else in a folder that lasts as long
+    as the process. Numba alone would refuse to start where neither of the first two can be written. A choice
+    that the user made with NUMBA_CACHE_DIR stands.
+    """
+    if os.environ.get(_VARIABLE):
+        return
+    beside_source = Path(geometry.__file__).parent / "__pycache__"
+    of_user = platformdirs.user_cache_path("wideberth", appauthor=False) / "kernels"
+    folder = first_writable([beside_source, of_user])
+    if folder == beside_source:
+        return  # numba's own first choice
+    os.environ[_VARIABLE] = str(folder or _of_process())
+
+
+def first_writable(folders: Sequence[Path]) -> Path | None:
+    """Return the first of `folders` that exists or can be made, and in which a file can be made."""
+    for folder in folders:
+        try:
+            folder.mkdir(parents=True, exist_ok=True)
+            with tempfile.TemporaryFile(dir=folder):
+                return folder
+        except OSError:
+            continue
+    return None
+
+
+def _of_process() -> str:
+    """Return a folder that nobody else can write (it holds code that is run) and that goes with the process."""
+    folder = tempfile.mkdtemp(prefix="wideberth-")
+    atexit.register(shutil.rmtree, folder, ignore_errors=True)
+    return folder

@@ -1,0 +1,43 @@
+"""Convex pieces packed into the arrays that the kernel walks."""
+
+from collections.abc import Sequence
+
+import numpy as np
+from numpy.typing import NDArray
+
+from geometry.kernel import Hulls
+from geometry.pieces import ConvexPiece
+
+Array = NDArray[np.float64]
+
+
+def packed_hulls(pieces: Sequence[ConvexPiece], parts: Sequence[int], axis: int | None) -> Hulls:
+    """Pack convex pieces of one body, in the body's system.
+
+    `parts` gives each piece's part number. `axis` is the coordinate axis about which the body turns (1 for the
+    gantry's Y, 2 for the couch's Z), None for a body that stands still.
+    """
+    first = np.cumsum([0, *(len(piece.vertices) for piece in pieces)])
+    edge_counts = np.concatenate([np.zeros(1, np.int64), *(piece.neighbour_counts for piece in pieces)])
+    neighbours = [piece.neighbours + start for piece, start in zip(pieces, first[:-1], strict=True)]
+    centres = [piece.vertices.mean(axis=0) for piece in pieces]
+    radii = [
+        np.linalg.norm(piece.vertices - centre, axis=1).max() for piece, centre in zip(pieces, centres, strict=True)
+    ]
+    return Hulls(
+        vertices=np.concatenate([np.empty((0, 3)), *(piece.vertices for piece in pieces)]),
+        first=first.astype(np.int32),
+        edge_first=np.cumsum(edge_counts).astype(np.int32),
+        neighbours=np.concatenate([np.empty(0, np.int64), *neighbours]).astype(np.int32),
+        part=np.array(parts, dtype=np.int32),
+        centres=np.array(centres, dtype=np.float64).reshape(-1, 3),
+        radii=np.array(radii, dtype=np.float64),
+        reach=np.array([_reach(piece.vertices, axis) for piece in pieces], dtype=np.float64),
+    )
+
+
+def _reach(vertices: Array, axis: int | None) -> float:
+    if axis is None:
+        return 0.0
+    across = np.delete(vertices, axis, axis=1)
+    return float(np.linalg.norm(across, axis=1).max())

@@ -1,0 +1,94 @@
+"""Which pieces of a scene are checked against which, as planes of angles that the kernel sweeps.
+
+Two bodies see each other under the gantry angle, the couch angle, both, or neither; each such pair of bodies is a plane.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from geometry.hulls import packed_hulls
+from geometry.kernel import Hulls
+from geometry.machine import JoinedPair
+from geometry.plane_kernel import Pairs
+from geometry.scene import Motion, Scene, ScenePart, Side
+
+# The gantry system turns about its Y, the patient support about its Z.
+_TURN_AXIS = {Motion.GANTRY: 1, Motion.TURNTABLE: 2, Motion.STILL: None}
+
+
+@dataclass(frozen=True, eq=False)
+class Plane:
+    """Two bodies and the pairs between them. Body a is the machine's, body b the other's.
+
+    `a.part` and `b.part` index `Scene.parts`. `with_gantry` and `with_couch` tell on which angles the pose depends.
+    """
+
+    a: Hulls
+    b: Hulls
+    pairs: Pairs
+    with_gantry: bool
+    with_couch: bool
+
+
+def planes_of(scene: Scene) -> tuple[Plane, ...]:
+    """Return the planes that have pairs to check."""
+    gantry = _members(scene, Motion.GANTRY)
+    turntable = _members(scene, Motion.TURNTABLE)
+    still = _members(scene, Motion.STILL)
+    still_room = [k for k in still if scene.parts[k].side is Side.ROOM]
+    still_couch = [k for k in still if scene.parts[k].side is Side.COUCH]
+    found = (
+        _plane(scene, Motion.GANTRY, gantry, Motion.TURNTABLE, turntable),
+        _plane(scene, Motion.GANTRY, gantry, Motion.STILL, still),
+        _plane(scene, Motion.STILL, still_room, Motion.TURNTABLE, turntable),
+        _plane(scene, Motion.STILL, still_room, Motion.STILL, still_couch),
+    )
+    return tuple(plane for plane in found if len(plane.pairs.i))
+
+
+def checked_part_pairs(scene: Scene) -> tuple[tuple[ScenePart, ScenePart], ...]:
+    """Return every pair of parts, machine's first, whose clearance is asked."""
+    seen: dict[tuple[int, int], None] = {}
+    for plane in planes_of(scene):
+        for i, j in zip(plane.a.part[plane.pairs.i], plane.b.part[plane.pairs.j], strict=True):
+            seen[int(i), int(j)] = None
+    return tuple((scene.parts[i], scene.parts[j]) for i, j in seen)
+
+
+def is_checked(first: ScenePart, second: ScenePart, joined: tuple[JoinedPair, ...]) -> bool:
+    """Tell whether clearance is asked between two parts.
+
+    Joining counts only between the room and a machine part: a gantry-couch pair, and any pair with the patient or a
+    device, is checked whatever a file says.
+    """
+    sides = {first.side, second.side}
+    if len(sides) == 1:
+        return False
+    if sides == {Side.GANTRY, Side.COUCH} or first.kind != "machine" or second.kind != "machine":
+        return True
+    return not any({pair.first, pair.second} == {first.name, second.name} for pair in joined)
+
+
+def _members(scene: Scene, motion: Motion) -> list[int]:
+    return [k for k, part in enumerate(scene.parts) if part.motion is motion]
+
+
+def _plane(scene: Scene, motion_a: Motion, members_a: list[int], motion_b: Motion, members_b: list[int]) -> Plane:
+    a = _body(scene, members_a, motion_a)
+    b = _body(scene, members_b, motion_b)
+    checked = np.zeros((len(scene.parts), len(scene.parts)), dtype=bool)
+    required = np.zeros_like(checked, dtype=np.float64)
+    for i in members_a:
+        for j in members_b:
+            checked[i, j] = is_checked(scene.parts[i], scene.parts[j], scene.setup.room.joined)
+            required[i, j] = scene.required_mm(scene.parts[i], scene.parts[j])
+    i, j = np.nonzero(checked[np.ix_(a.part, b.part)])
+    pairs = Pairs(i.astype(np.int32), j.astype(np.int32), required[a.part[i], b.part[j]])
+    return Plane(a, b, pairs, Motion.GANTRY in (motion_a, motion_b), Motion.TURNTABLE in (motion_a, motion_b))
+
+
+def _body(scene: Scene, members: list[int], motion: Motion) -> Hulls:
+    pieces = [piece for k in members for piece in scene.parts[k].pieces]
+    parts = [k for k in members for _ in scene.parts[k].pieces]
+    return packed_hulls(pieces, parts, _TURN_AXIS[motion])

@@ -1,0 +1,1 @@
+"""The tests, and the one check command: `python -m tests.check`."""
