@@ -120,9 +120,7 @@ def source_direction_fixed(gantry_deg: float) -> Array:
 def source_direction_dicom(gantry_deg: float, couch_deg: float, patient_position: str = "HFS") -> Array:
     """Return the unit vector from the isocentre to the source in DICOM patient axes, pitch and roll zero."""
     direction: Array = (
-        R_dicom_tabletop(patient_position)
-        @ R_fixed_turntable(couch_deg).T
-        @ source_direction_fixed(gantry_deg)
+        R_dicom_tabletop(patient_position) @ R_fixed_turntable(couch_deg).T @ source_direction_fixed(gantry_deg)
     )
     return direction
 

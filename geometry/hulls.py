@@ -1,11 +1,12 @@
 """Convex pieces packed into the arrays that the kernel walks."""
 
 from collections.abc import Sequence
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
 
-from geometry.kernel import Hulls
+from geometry.kernel import WINDS, Hulls
 from geometry.pieces import ConvexPiece
 
 Array = NDArray[np.float64]
@@ -29,11 +30,36 @@ def packed_hulls(pieces: Sequence[ConvexPiece], parts: Sequence[int], axis: int 
         first=first.astype(np.int32),
         edge_first=np.cumsum(edge_counts).astype(np.int32),
         neighbours=np.concatenate([np.empty(0, np.int64), *neighbours]).astype(np.int32),
+        compass=np.array(
+            [start + _farthest(piece.vertices) for piece, start in zip(pieces, first[:-1], strict=True)], dtype=np.int32
+        ).reshape(-1, 6 * WINDS * WINDS),
         part=np.array(parts, dtype=np.int32),
         centres=np.array(centres, dtype=np.float64).reshape(-1, 3),
         radii=np.array(radii, dtype=np.float64),
         reach=np.array([_reach(piece.vertices, axis) for piece in pieces], dtype=np.float64),
     )
+
+
+def _farthest(vertices: Array) -> NDArray[np.int64]:
+    """Return the vertex that is farthest along the middle of each wind of the compass, (6 * WINDS * WINDS,)."""
+    farthest: NDArray[np.int64] = np.argmax(_winds() @ vertices.T, axis=1)
+    return farthest
+
+
+@lru_cache(maxsize=1)
+def _winds() -> Array:
+    """Return the directions of the compass in the order of `kernel.wind`, (6 * WINDS * WINDS, 3), of any length."""
+    across = (np.arange(WINDS) + 0.5) * 2.0 / WINDS - 1.0
+    v, u = np.meshgrid(across, across, indexing="ij")
+    sides = []
+    for axis in range(3):
+        for sign in (1.0, -1.0):
+            side = np.empty((WINDS * WINDS, 3))
+            side[:, axis] = sign
+            side[:, (axis + 1) % 3] = u.ravel()
+            side[:, (axis + 2) % 3] = v.ravel()
+            sides.append(side)
+    return np.concatenate(sides)
 
 
 def _reach(vertices: Array, axis: int | None) -> float:

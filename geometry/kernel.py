@@ -8,11 +8,14 @@ Body A stands still in its own system; body B is given by `turn`, the nine entri
 B's system to A's (both have their origin at the isocentre). Lengths in mm. Imports nothing of ours.
 """
 
-from typing import NamedTuple
+from collections.abc import Callable
+from typing import NamedTuple, TypeVar, cast
 
 import numpy as np
 from numba import njit
 from numpy.typing import NDArray
+
+Kernel = TypeVar("Kernel", bound=Callable[..., object])
 
 APART = 0  # the distance is known to within RESOLUTION_MM
 CONTACT = 1  # the bodies touch, overlap, or one holds the other
@@ -22,12 +25,30 @@ FAILED = 3  # the iteration gave up; `lower` is still a valid bound
 RESOLUTION_MM = 1e-8
 CONTACT_MM = 1e-7
 STEPS = 100
-# Below this many vertices a plain scan beats walking along edges.
+# Covers rounding in carried bounds; far above 1e-16 * 10 m, far below what anyone can measure.
+ROUNDING_MM = 1e-7
+# Up to this many vertices a plain scan beats walking along edges.
 SCAN = 14
+# The compass divides each side of a cube of directions into this many by this many.
+WINDS = 6
 
-# No kernel allocates, so none needs numba's reference counting, whose atomic counters took six sevenths of a query.
-COMPILED = {"nogil": True, "cache": True, "error_model": "numpy", "_nrt": False}
-INLINE = {**COMPILED, "forceinline": True}
+
+def compiled(function: Kernel) -> Kernel:
+    """Compile a kernel for calls without the interpreter's lock.
+
+    No kernel allocates, so none needs numba's reference counting (`_nrt`), whose atomic counters took six sevenths of
+    the time of a query.
+    """
+    # What numba makes of a function is called like the function.
+    return cast(Kernel, njit(nogil=True, cache=True, error_model="numpy", _nrt=False)(function))  # type: ignore[call-overload]
+
+
+def inlined(function: Kernel) -> Kernel:
+    """Compile a kernel that is only a step of others, into each of its callers."""
+    return cast(
+        Kernel,
+        njit(nogil=True, cache=True, error_model="numpy", _nrt=False, forceinline=True)(function),  # type: ignore[call-overload]
+    )
 
 
 class Hulls(NamedTuple):
@@ -35,6 +56,7 @@ class Hulls(NamedTuple):
 
     `vertices` (V, 3), mm; those of piece p are rows first[p] to first[p + 1]. `neighbours[edge_first[v] :
     edge_first[v + 1]]` are the vertices that share a hull edge with vertex v. `part` (P,) is each piece's part.
+    `compass` (P, 6 * WINDS * WINDS) are vertices to start a walk from, by direction (see `wind`).
     `centres` (P, 3) and `radii` (P,) are enclosing spheres. `reach` (P,) is the greatest distance of a piece from the
     axis about which its body turns; 0 for a body that stands still.
     """
@@ -43,6 +65,7 @@ class Hulls(NamedTuple):
     first: NDArray[np.int32]
     edge_first: NDArray[np.int32]
     neighbours: NDArray[np.int32]
+    compass: NDArray[np.int32]
     part: NDArray[np.int32]
     centres: NDArray[np.float64]
     radii: NDArray[np.float64]
@@ -66,9 +89,25 @@ class Memory(NamedTuple):
     simplex: NDArray[np.float64]
 
 
-@njit(**INLINE)
-def support(hulls, piece, start, x, y, z):  # type: ignore[no-untyped-def]
-    """Return the vertex row of `piece` that is farthest along (x, y, z); walking starts at row `start`."""
+@inlined
+def wind(x, y, z):
+    """Return the place in a compass of a direction: the side of the cube that it meets, and the square on that side."""
+    ax, ay, az = abs(x), abs(y), abs(z)
+    if ax >= ay and ax >= az:
+        side, u, v, w = (0 if x > 0.0 else 1), y, z, ax
+    elif ay >= az:
+        side, u, v, w = (2 if y > 0.0 else 3), z, x, ay
+    else:
+        side, u, v, w = (4 if z > 0.0 else 5), x, y, az
+    scale = 0.5 * WINDS / w if w > 0.0 else 0.0
+    column = min(int(u * scale + 0.5 * WINDS), WINDS - 1)
+    row = min(int(v * scale + 0.5 * WINDS), WINDS - 1)
+    return (side * WINDS + row) * WINDS + column
+
+
+@inlined
+def support(hulls, piece, start, x, y, z):
+    """Return the vertex row of `piece` that is farthest along (x, y, z); row `start` is a guess."""
     vertices = hulls.vertices
     low = hulls.first[piece]
     high = hulls.first[piece + 1]
@@ -84,6 +123,11 @@ def support(hulls, piece, start, x, y, z):  # type: ignore[no-untyped-def]
     # On a convex polytope a vertex that none of its neighbours beats is the farthest of all.
     best = start
     most = vertices[best, 0] * x + vertices[best, 1] * y + vertices[best, 2] * z
+    row = hulls.compass[piece, wind(x, y, z)]
+    along = vertices[row, 0] * x + vertices[row, 1] * y + vertices[row, 2] * z
+    if along > most:
+        most = along
+        best = row
     while True:
         here = best
         for k in range(hulls.edge_first[here], hulls.edge_first[here + 1]):
@@ -96,8 +140,8 @@ def support(hulls, piece, start, x, y, z):  # type: ignore[no-untyped-def]
             return best
 
 
-@njit(**INLINE)
-def _nearest_on_segment(ax, ay, az, bx, by, bz):  # type: ignore[no-untyped-def]
+@inlined
+def _nearest_on_segment(ax, ay, az, bx, by, bz):
     """Return the weights of a and b in the segment's point nearest to the origin."""
     dx = bx - ax
     dy = by - ay
@@ -112,8 +156,8 @@ def _nearest_on_segment(ax, ay, az, bx, by, bz):  # type: ignore[no-untyped-def]
     return 1.0 - t, t
 
 
-@njit(**INLINE)
-def _nearest_on_triangle(ax, ay, az, bx, by, bz, cx, cy, cz):  # type: ignore[no-untyped-def]
+@inlined
+def _nearest_on_triangle(ax, ay, az, bx, by, bz, cx, cy, cz):
     """Return the weights of a, b and c in the triangle's point nearest to the origin.
 
     By the regions of the triangle's corners, edges and face (Ericson, Real-Time Collision Detection, 5.1.5).
@@ -156,8 +200,8 @@ def _nearest_on_triangle(ax, ay, az, bx, by, bz, cx, cy, cz):  # type: ignore[no
     return va / total, vb / total, vc / total
 
 
-@njit(**INLINE)
-def _nearest_on_edges(ax, ay, az, bx, by, bz, cx, cy, cz):  # type: ignore[no-untyped-def]
+@inlined
+def _nearest_on_edges(ax, ay, az, bx, by, bz, cx, cy, cz):
     """Return the weights of the point nearest to the origin on the three edges of a flat triangle."""
     wa, wb = _nearest_on_segment(ax, ay, az, bx, by, bz)
     x, y, z = wa * ax + wb * bx, wa * ay + wb * by, wa * az + wb * bz
@@ -175,8 +219,8 @@ def _nearest_on_edges(ax, ay, az, bx, by, bz, cx, cy, cz):  # type: ignore[no-un
     return best
 
 
-@njit(**INLINE)
-def _nearest_on_tetrahedron(s, weights):  # type: ignore[no-untyped-def]
+@inlined
+def _nearest_on_tetrahedron(s, weights):
     """Set the weights of the tetrahedron's point nearest to the origin; return True when it holds the origin."""
     least = np.inf
     holds = True
@@ -215,8 +259,8 @@ def _nearest_on_tetrahedron(s, weights):  # type: ignore[no-untyped-def]
     return holds
 
 
-@njit(**INLINE)
-def _weigh_inside(s, weights):  # type: ignore[no-untyped-def]
+@inlined
+def _weigh_inside(s, weights):
     """Set the weights with which the tetrahedron's corners make the origin, by signed volumes."""
     total = 0.0
     for face in range(4):
@@ -234,8 +278,8 @@ def _weigh_inside(s, weights):  # type: ignore[no-untyped-def]
         weights[face] = weights[face] / total if total > 0.0 else 0.25
 
 
-@njit(**INLINE)
-def _depth(s):  # type: ignore[no-untyped-def]
+@inlined
+def _depth(s):
     """Return the distance from the origin to the nearest face plane of the tetrahedron that holds it."""
     least = np.inf
     for face in range(4):
@@ -252,8 +296,8 @@ def _depth(s):  # type: ignore[no-untyped-def]
     return least
 
 
-@njit(**INLINE)
-def _shrink(size, s, corners, weights):  # type: ignore[no-untyped-def]
+@inlined
+def _shrink(size, s, corners, weights):
     """Reduce the simplex to the face that holds its point nearest to the origin; return the size, 4 for contact."""
     if size == 1:
         weights[0] = 1.0
@@ -280,8 +324,8 @@ def _shrink(size, s, corners, weights):  # type: ignore[no-untyped-def]
     return kept
 
 
-@njit(**INLINE)
-def _set_rates(a, i, b, j, turn, memory, pair, nx, ny, nz):  # type: ignore[no-untyped-def]
+@inlined
+def _set_rates(a, i, b, j, turn, memory, pair, nx, ny, nz):
     """Keep how fast the bound of the plane with unit normal n, in a's system, can fall: a about Y, b about Z."""
     across = np.sqrt(nx * nx + nz * nz)
     memory.rate_a[pair] = abs(nx * a.centres[i, 2] - nz * a.centres[i, 0]) + across * a.radii[i]
@@ -292,14 +336,26 @@ def _set_rates(a, i, b, j, turn, memory, pair, nx, ny, nz):  # type: ignore[no-u
     memory.rate_b[pair] = abs(my * b.centres[j, 0] - mx * b.centres[j, 1]) + across * b.radii[j]
 
 
-@njit(**COMPILED)
-def distance(a, i, b, j, turn, memory, pair, limit):  # type: ignore[no-untyped-def]
+@inlined
+def fall(reach_a, reach_b, rate_a, rate_b, by_a, by_b):
+    """Return by how much a bound may fall when the bodies turn by up to `by_a` and `by_b` radians.
+
+    The lesser of what the separating plane allows (see `distance`) and of what the pieces can move at all.
+    """
+    plane = rate_a * by_a + rate_b * by_b + 0.5 * (reach_a * by_a * by_a + reach_b * by_b * by_b)
+    # The arc stands in for its chord: no sine for each pair at each pose.
+    return min(plane, reach_a * by_a + reach_b * by_b) + ROUNDING_MM
+
+
+@compiled
+def distance(a, i, b, j, turn, memory, pair, limit, half_a, half_b):
     """Find the distance between piece i of body a and piece j of body b.
 
     Returns (lower, upper, status): the distance lies in [lower, upper]; lower is 0 or certified by a separating
     plane, upper is the length of an actual difference vector. Status APART means upper - lower <= RESOLUTION_MM. As
-    soon as lower exceeds `limit` the query ends as BEYOND. In CONTACT lower is 0, and -upper a depth of overlap: no
-    shift shorter than it parts the bodies. `memory` row `pair` warms the start and keeps the end.
+    soon as the bound exceeds `limit` wherever a turns by up to `half_a` and b by up to `half_b` (radians, both 0 for
+    this pose alone), the query ends as BEYOND. In CONTACT lower is 0, and -upper a depth of overlap: no shift shorter
+    than it parts the bodies. `memory` row `pair` warms the start and keeps the end.
 
     The separating plane outlives the pose. With its unit normal n held still, a vertex p of a at distance r from the
     Y axis has n . p(g) >= n . p(0) - |g| |n . (Y x p)| - g^2 r / 2 (Taylor), likewise b about Z. Over a piece inside a
@@ -329,6 +385,8 @@ def distance(a, i, b, j, turn, memory, pair, limit):  # type: ignore[no-untyped-
         size = _shrink(size, s, corners, weights)
         memory.size[pair] = size
         if size == 4:
+            memory.rate_a[pair] = a.reach[i]
+            memory.rate_b[pair] = b.reach[j]
             return 0.0, -_depth(s), CONTACT
         vx = 0.0
         vy = 0.0
@@ -339,6 +397,8 @@ def distance(a, i, b, j, turn, memory, pair, limit):  # type: ignore[no-untyped-
             vz += weights[k] * s[k, 2]
         length = np.sqrt(vx * vx + vy * vy + vz * vz)
         if length <= CONTACT_MM:
+            memory.rate_a[pair] = a.reach[i]
+            memory.rate_b[pair] = b.reach[j]
             return 0.0, length, CONTACT
         stalled = length >= upper
         upper = min(upper, length)
@@ -361,9 +421,14 @@ def distance(a, i, b, j, turn, memory, pair, limit):  # type: ignore[no-untyped-
             nx = vx / length
             ny = vy / length
             nz = vz / length
-        if upper - lower <= RESOLUTION_MM or lower > limit:
+        if upper - lower <= RESOLUTION_MM:
             _set_rates(a, i, b, j, turn, memory, pair, nx, ny, nz)
-            return lower, upper, APART if upper - lower <= RESOLUTION_MM else BEYOND
+            return lower, upper, APART
+        if lower > limit:
+            _set_rates(a, i, b, j, turn, memory, pair, nx, ny, nz)
+            falls = fall(a.reach[i], b.reach[j], memory.rate_a[pair], memory.rate_b[pair], half_a, half_b)
+            if lower - falls > limit:
+                return lower, upper, BEYOND
         for k in range(size):
             stalled = stalled or (corners[k, 0] == p and corners[k, 1] == q)
         if stalled:

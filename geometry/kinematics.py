@@ -39,7 +39,9 @@ class CouchPose:
         return transform(rotation_z(self.eccentric_deg), self.E_mm) @ table
 
 
-def couch_pose(couch: Couch, p_isocentre_tabletop: Array, pitch_deg: float, roll_deg: float, eccentric_deg: float) -> CouchPose:
+def couch_pose(
+    couch: Couch, p_isocentre_tabletop: Array, pitch_deg: float, roll_deg: float, eccentric_deg: float
+) -> CouchPose:
     """Return the stages that hold a point of the table top, (3,), mm, at the isocentre.
 
     T = -Rz(-eccentric) E - Rx(pitch) Ry(roll) p, so that the point stays put at every couch angle, pitch and roll.

@@ -38,7 +38,9 @@ def convex_piece(points: Array) -> ConvexPiece:
     try:
         hull = ConvexHull(points)
     except (QhullError, ValueError) as error:
-        raise GeometryError(f"piece of {len(points)} points spans no volume; allowed: 4 or more points apart") from error
+        raise GeometryError(
+            f"piece of {len(points)} points spans no volume; allowed: 4 or more points apart"
+        ) from error
     renumbered = np.full(len(points), -1)
     renumbered[hull.vertices] = np.arange(len(hull.vertices))
     vertices = np.ascontiguousarray(points[hull.vertices])

@@ -1,6 +1,6 @@
 """Which pieces of a scene are checked against which, as planes of angles that the kernel sweeps.
 
-Two bodies see each other under the gantry angle, the couch angle, both, or neither; each such pair of bodies is a plane.
+How two bodies stand to each other depends on the gantry angle, the couch angle, both, or neither: each two are a plane.
 """
 
 from dataclasses import dataclass
@@ -79,10 +79,10 @@ def _plane(scene: Scene, motion_a: Motion, members_a: list[int], motion_b: Motio
     b = _body(scene, members_b, motion_b)
     checked = np.zeros((len(scene.parts), len(scene.parts)), dtype=bool)
     required = np.zeros_like(checked, dtype=np.float64)
-    for i in members_a:
-        for j in members_b:
-            checked[i, j] = is_checked(scene.parts[i], scene.parts[j], scene.setup.room.joined)
-            required[i, j] = scene.required_mm(scene.parts[i], scene.parts[j])
+    for one in members_a:
+        for other in members_b:
+            checked[one, other] = is_checked(scene.parts[one], scene.parts[other], scene.setup.room.joined)
+            required[one, other] = scene.required_mm(scene.parts[one], scene.parts[other])
     i, j = np.nonzero(checked[np.ix_(a.part, b.part)])
     pairs = Pairs(i.astype(np.int32), j.astype(np.int32), required[a.part[i], b.part[j]])
     return Plane(a, b, pairs, Motion.GANTRY in (motion_a, motion_b), Motion.TURNTABLE in (motion_a, motion_b))

@@ -1,7 +1,8 @@
 """What is proved of the angle plane: every point of a cell, not samples of it."""
 
 import math
-from dataclasses import dataclass
+import queue
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -10,9 +11,9 @@ from geometry.kernel import Memory
 from geometry.plane_kernel import Lists
 from geometry.planes import Plane, planes_of
 from geometry.progress import Progress, Silent
-from geometry.proof_kernel import Proved, Strip, prove_tile
+from geometry.proof_kernel import Proved, Strip, prove_tiles
 from geometry.scene import Scene
-from geometry.tasks import run_tiles
+from geometry.tasks import Tiles, run_tiles
 
 Bounds = NDArray[np.float32]
 Indices = NDArray[np.int32]
@@ -20,6 +21,8 @@ Interval = tuple[float, float]
 
 # Cells of the first division are at most this wide, deg. Wider ones would have to be halved nearly everywhere.
 FIRST_CELL_DEG = 8.0
+# First cells each way that are proved one after the other, with what was learnt from one to the next.
+TILE = 4
 # Angles nearer than this to the border of a step count as on it.
 _ON_BORDER = 1e-7
 
@@ -50,8 +53,8 @@ class Steps:
 class Proof:
     """Lower bounds for the smallest cells, each array (couch steps, gantry steps); true angles, no tolerance.
 
-    `slack_mm`, `clearance_mm`: valid at every point of the cell; NaN where unproved. `machine_part`, `couch_part`: indices
-    into `Scene.parts` of the pair with that clearance or, unproved, of the pair in the way. `depth`: halvings.
+    `slack_mm`, `clearance_mm`: valid at every point of the cell; NaN where unproved. `machine_part`, `couch_part`:
+    indices into `Scene.parts` of the pair with that clearance or, unproved, of the pair in the way. `depth`: halvings.
     `evaluations` counts the cells that were looked at.
     """
 
@@ -130,9 +133,9 @@ def prove(
     window: tuple[Interval, Interval] | None = None,
     threads: int | None = None,
 ) -> Proof:
-    """Prove the plane; with `window` (gantry, couch intervals, deg) only the first cells that touch it.
+    """Prove the plane; with `window` (gantry, couch intervals, deg) only the tiles that touch it.
 
-    Each first cell is proved from nothing, so that a window gives the same as the whole. Raises Cancelled.
+    Each tile is proved from nothing, so that a window gives the same as the whole. Raises Cancelled.
     """
     progress = progress or Silent()
     shape = (couch.count, gantry.count)
@@ -151,7 +154,7 @@ def prove(
         proved, evaluated = _prove_plane(plane, gantry, couch, progress, window, threads)
         evaluations += evaluated
         _merge(result, plane, proved)
-    return Proof(*(getattr(result, name) for name in list(Proof.__dataclass_fields__)[:-1]), evaluations)
+    return replace(result, evaluations=evaluations)
 
 
 def _prove_plane(
@@ -172,34 +175,41 @@ def _prove_plane(
     )
     strip_a = _strip(gantry) if plane.with_gantry else Strip(0.0, 1.0, 0.0, 0.0)
     strip_b = _strip(couch) if plane.with_couch else Strip(0.0, 1.0, 0.0, 0.0)
-    tiles = [
-        (i, ni, j, nj)
-        for j, nj in _first_cells(couch, plane.with_couch, window[1] if window else None)
-        for i, ni in _first_cells(gantry, plane.with_gantry, window[0] if window else None)
-    ]
-    evaluated = np.zeros(len(tiles), dtype=np.int64)
+    first = (_first_cell(gantry) if plane.with_gantry else 1, _first_cell(couch) if plane.with_couch else 1)
+    tiles = np.array(
+        [
+            (*across, *along)
+            for along in (_tiles(couch, first[1], window and window[1]) if plane.with_couch else [(0, 1)])
+            for across in (_tiles(gantry, first[0], window and window[0]) if plane.with_gantry else [(0, 1)])
+        ]
+    ).reshape(-1, 4)
+    evaluated = queue.SimpleQueue[int]()
 
-    def work(k: int, memory: Memory, lists: Lists) -> None:
-        evaluated[k] = prove_tile(plane.a, plane.b, plane.pairs, strip_a, strip_b, tiles[k], memory, lists, proved)
+    def work(hand: Tiles, memory: Memory, lists: Lists) -> None:
+        evaluated.put(prove_tiles(plane.a, plane.b, plane.pairs, strip_a, strip_b, hand, first, memory, lists, proved))
 
-    run_tiles(work, range(len(tiles)), plane.pairs, progress, "proof", threads)
-    return proved, int(evaluated.sum())
+    run_tiles(work, tiles, plane.pairs, progress, "proof", threads)
+    return proved, sum(evaluated.get() for _ in range(evaluated.qsize()))
 
 
-def _first_cells(steps: Steps, turns: bool, window: Interval | None) -> list[tuple[int, int]]:
-    """Return (first step, number of steps) of the cells that an axis is divided into at first."""
-    if not turns:
-        return [(0, 1)]
+def _first_cell(steps: Steps) -> int:
+    """Return the number of steps, a power of two, of the cells that an axis is divided into at first."""
     size = 1
-    while 2 * size * steps.step_deg <= FIRST_CELL_DEG:
+    while 2 * size * steps.step_deg <= FIRST_CELL_DEG and size < steps.count:
         size *= 2
-    firsts = range(0, steps.count, size)
+    return size
+
+
+def _tiles(steps: Steps, first: int, window: Interval | None) -> list[tuple[int, int]]:
+    """Return the ranges of steps that an axis is proved in, one after the other; those that touch the window."""
+    size = first * TILE
+    ranges = [(k, min(k + size, steps.count)) for k in range(0, steps.count, size)]
     if window is None:
-        return [(first, size) for first in firsts]
+        return ranges
     # A window that ends on a border needs the cells on both sides of it.
     low = (window[0] - steps.start_deg) / steps.step_deg - _ON_BORDER
     high = (window[1] - steps.start_deg) / steps.step_deg + _ON_BORDER
-    return [(first, size) for first in firsts if first <= high and first + size >= low]
+    return [(start, stop) for start, stop in ranges if start <= high and stop >= low]
 
 
 def _strip(steps: Steps) -> Strip:

@@ -8,11 +8,10 @@ A cell that is short at every pose is left at once: an upper bound of its least 
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
-from geometry.kernel import COMPILED, INLINE
-from geometry.plane_kernel import gather, sift, turn_between
+from geometry.kernel import Hulls, Memory, compiled, inlined
+from geometry.plane_kernel import Lists, Pairs, gather, sift, turn_between
 
 # A proved cell is still halved while its bound gives away more than this share of the slack at its middle, so that the
 # least clearance of a span is not far below the truth.
@@ -20,7 +19,7 @@ GIVEN_AWAY = 0.75
 
 
 class Strip(NamedTuple):
-    """One axis cut into steps: step k is [start + k * step, start + (k + 1) * step], clipped to [low, high], radians."""
+    """One axis in steps: step k is [start + k * step, start + (k + 1) * step], clipped to [low, high], radians."""
 
     start: float
     step: float
@@ -41,8 +40,8 @@ class Proved(NamedTuple):
     depth: NDArray[np.int8]
 
 
-@njit(**INLINE)
-def _middle(strip, first, count):  # type: ignore[no-untyped-def]
+@inlined
+def _middle(strip, first, count):
     """Return middle and half-width, radians, of steps [first, first + count) of a strip."""
     low = max(strip.start + first * strip.step, strip.low)
     high = min(strip.start + (first + count) * strip.step, strip.high)
@@ -51,23 +50,53 @@ def _middle(strip, first, count):  # type: ignore[no-untyped-def]
     return 0.5 * (low + high), 0.5 * (high - low) * (1.0 + 1e-12)
 
 
-@njit(**INLINE)
-def _rounded_down(value):  # type: ignore[no-untyped-def]
+@inlined
+def _rounded_down(value):
     """Return the greatest number of single precision that certainly does not exceed `value`."""
     return np.float32(value - abs(value) * 1e-7)
 
 
-@njit(**COMPILED)
-def prove_tile(a, b, pairs, gantry, couch, tile, memory, lists, proved):  # type: ignore[no-untyped-def]
-    """Prove the steps [i0, i0 + ni) of strip `gantry` by [j0, j0 + nj) of `couch`, `tile` = (i0, ni, j0, nj).
+@compiled
+def prove_tiles(
+    a: Hulls,
+    b: Hulls,
+    pairs: Pairs,
+    gantry: Strip,
+    couch: Strip,
+    tiles: NDArray[np.int64],
+    first: tuple[int, int],
+    memory: Memory,
+    lists: Lists,
+    proved: Proved,
+) -> int:
+    """Prove the steps [i0, i1) of strip `gantry` by [j0, j1) of `couch` of each row (i0, i1, j0, j1) of `tiles`.
 
-    ni and nj are powers of two. Nothing is remembered from tiles before, so that a tile gives the same whether it is
-    proved alone or among others. Returns the number of cells evaluated.
+    `first` = (ni, nj), powers of two, is the size of the cells that are looked at first. Nothing is remembered from
+    tile to tile, so that a tile gives the same whether it is proved alone or among others. Returns the number of cells
+    evaluated.
     """
-    memory.size[:] = 0
+    evaluated = 0
+    for k in range(len(tiles)):
+        leader = -1
+        for j in range(tiles[k, 2], tiles[k, 3], first[1]):
+            for i in range(tiles[k, 0], tiles[k, 1], first[0]):
+                count, leader = _prove_cell(a, b, pairs, gantry, couch, i, j, first, memory, lists, leader, proved)
+                evaluated += count
+    return evaluated
+
+
+@compiled
+def _prove_cell(a, b, pairs, gantry, couch, i, j, first, memory, lists, leader, proved):
+    """Prove one of the first cells; `leader` is the nearest pair of the one before, -1 for none.
+
+    Returns (cells evaluated, nearest pair at the middle).
+    """
     rows, columns = proved.slack.shape
     cells = lists.cells
-    cells[0, 0], cells[0, 1], cells[0, 2], cells[0, 3] = tile
+    cells[0, 0] = i
+    cells[0, 1] = first[0]
+    cells[0, 2] = j
+    cells[0, 3] = first[1]
     cells[0, 4] = 1
     waiting = 1
     evaluated = 0
@@ -79,11 +108,14 @@ def prove_tile(a, b, pairs, gantry, couch, tile, memory, lists, proved):  # type
         at_a, half_a = _middle(gantry, i0, ni)
         at_b, half_b = _middle(couch, j0, nj)
         turn = turn_between(np.cos(at_a), np.sin(at_a), np.cos(at_b), np.sin(at_b))
-        if depth == 1:
-            gather(a, b, pairs, turn, at_a, at_b, lists)
+        if leader < 0:
+            leader = gather(a, b, pairs, turn, at_a, at_b, memory, lists)
+        place = leader if depth == 1 else 0
         tight, bound, bound_pair, slack_bound, slack_pair, slack = sift(
-            a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, np.inf, np.inf
+            a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, place, np.inf, np.inf
         )
+        if depth == 1:
+            leader = lists.pair[1, 0]
         evaluated += 1
         smallest = ni == 1 and nj == 1
         good = slack_bound >= 0.0
@@ -106,4 +138,4 @@ def prove_tile(a, b, pairs, gantry, couch, tile, memory, lists, proved):  # type
             child[3] = nj if across_a else nj // 2
             child[4] = depth + 1
             waiting += 1
-    return evaluated
+    return evaluated, leader

@@ -1,8 +1,10 @@
 """A set-up as pieces on the three bodies that move: the gantry, what turns with the couch, and what stands still."""
 
+from collections.abc import Hashable
 from dataclasses import dataclass, replace
 from enum import StrEnum
 from functools import lru_cache
+from typing import cast
 
 import numpy as np
 from numpy.typing import NDArray
@@ -10,11 +12,12 @@ from numpy.typing import NDArray
 from geometry.body import Body, body_landmarks, body_parts
 from geometry.decompose import revolved
 from geometry.errors import GeometryError
-from geometry.frames import R_dicom_tabletop, R_gantry_collimator, moved, rotation_z, transform
+from geometry.frames import R_dicom_tabletop, R_gantry_collimator, moved, transform
 from geometry.kinematics import CouchPose, couch_pose
-from geometry.machine import Axis, Mount, Part, PartKind, Room, Stage
+from geometry.landmarks import Landmark
+from geometry.machine import EVERY_STAGE, Axis, Mount, Part, PartKind, Room, Stage
 from geometry.pieces import ConvexPiece, convex_piece
-from geometry.setup import Landmark, Setup, Surface
+from geometry.setup import Setup, Surface
 from geometry.solids import Group, Solid
 
 Array = NDArray[np.float64]
@@ -88,24 +91,12 @@ def build_scene(setup: Setup) -> Scene:
         for part in room.parts
         if part.accessory is None or part.accessory in setup.fitted
     ]
-    T_support_tabletop = couch.T_support_part(frozenset(Stage))
-    T_support_patient = T_support_tabletop @ T_tabletop_patient
-    carried = Motion.TURNTABLE
+    T_support_tabletop = couch.T_support_part(EVERY_STAGE)
+    excess = room.max_excess_mm
     for name, solid in patient_solids(setup.patient):
-        parts.append(_placed(name, solid, Side.COUCH, carried, "patient", T_support_patient, room.max_excess_mm, None))
-    for device in setup.devices:
-        parts.append(
-            _placed(
-                device.name,
-                device.solid,
-                Side.COUCH,
-                carried,
-                "device",
-                T_support_tabletop,
-                room.max_excess_mm,
-                device.colour,
-            )
-        )
+        part = Part(name, Mount.COUCH, solid, kind="patient")
+        parts.append(_placed(part, Side.COUCH, Motion.TURNTABLE, T_support_tabletop @ T_tabletop_patient, excess))
+    parts += [_placed(device, Side.COUCH, Motion.TURNTABLE, T_support_tabletop, excess) for device in setup.devices]
     return Scene(setup, tuple(parts), couch, p_isocentre, _beyond_travel(room, setup, couch))
 
 
@@ -135,20 +126,26 @@ def patient_placement(setup: Setup) -> Array:
     return transform(turn, shift)
 
 
-@lru_cache(maxsize=1024)
 def faceted_pieces(solid: Solid, max_excess_mm: float) -> tuple[tuple[ConvexPiece, ...], float]:
-    """Return a solid's pieces and their stated excess; remembered, since a set-up is posed again and again."""
+    """Return a solid's pieces and their stated excess, mm; remembered, since a set-up is posed again and again."""
+    return _faceted_pieces(cast(Hashable, solid), max_excess_mm)
+
+
+@lru_cache(maxsize=1024)
+def _faceted_pieces(hashable: Hashable, max_excess_mm: float) -> tuple[tuple[ConvexPiece, ...], float]:
+    # Every solid is a frozen dataclass, hashed by value or by identity.
+    solid = cast(Solid, hashable)
     faceted = solid.faceted(max_excess_mm)
     return tuple(convex_piece(points) for points in faceted.pieces), faceted.excess_mm
 
 
 @lru_cache(maxsize=256)
 def _revolved_pieces(
-    solid: Solid, max_excess_mm: float, arm_matrix: tuple[float, ...]
+    hashable: Hashable, max_excess_mm: float, arm_matrix: tuple[float, ...]
 ) -> tuple[tuple[ConvexPiece, ...], float]:
     """Return the pieces that hold the solid, moved by its arm, through a whole turn of the collimator."""
     T_arm = np.array(arm_matrix).reshape(4, 4)
-    pieces, excess = faceted_pieces(solid, max_excess_mm)
+    pieces, excess = faceted_pieces(cast(Solid, hashable), max_excess_mm)
     swept = revolved(tuple(piece.placed(T_arm).vertices for piece in pieces), max_excess_mm)
     return tuple(convex_piece(points) for points in swept.pieces), excess + swept.excess_mm
 
@@ -156,34 +153,24 @@ def _revolved_pieces(
 def _machine_part(part: Part, setup: Setup, couch: CouchPose) -> ScenePart:
     T_arm = _arm_matrix(part, setup)
     excess = setup.room.max_excess_mm
-    kind = part.kind
     if part.mount is Mount.COUCH:
         motion = Motion.TURNTABLE if Stage.TURNTABLE in part.follows else Motion.STILL
-        matrix = couch.T_support_part(part.follows) @ T_arm
-        return _placed(part.name, part.solid, Side.COUCH, motion, kind, matrix, excess, part.colour)
+        return _placed(part, Side.COUCH, motion, couch.T_support_part(part.follows) @ T_arm, excess)
     if part.mount is Mount.FIXED:
-        return _placed(part.name, part.solid, Side.ROOM, Motion.STILL, kind, T_arm, excess, part.colour)
+        return _placed(part, Side.ROOM, Motion.STILL, T_arm, excess)
     if part.mount is Mount.COLLIMATOR and setup.collimator_deg is None:
-        pieces, stated = _revolved_pieces(part.solid, excess, tuple(T_arm.ravel()))
-        return ScenePart(part.name, Side.GANTRY, Motion.GANTRY, kind, pieces, stated, part.colour)
+        pieces, stated = _revolved_pieces(cast(Hashable, part.solid), excess, tuple(T_arm.ravel()))
+        return ScenePart(part.name, Side.GANTRY, Motion.GANTRY, part.kind, pieces, stated, part.colour)
     turned = np.eye(4)
     if part.mount is Mount.COLLIMATOR and setup.collimator_deg is not None:
         turned[:3, :3] = R_gantry_collimator(setup.collimator_deg)
-    return _placed(part.name, part.solid, Side.GANTRY, Motion.GANTRY, kind, turned @ T_arm, excess, part.colour)
+    return _placed(part, Side.GANTRY, Motion.GANTRY, turned @ T_arm, excess)
 
 
-def _placed(
-    name: str,
-    solid: Solid,
-    side: Side,
-    motion: Motion,
-    kind: PartKind,
-    matrix: Array,
-    max_excess_mm: float,
-    colour: str | None,
-) -> ScenePart:
-    pieces, excess = faceted_pieces(solid, max_excess_mm)
-    return ScenePart(name, side, motion, kind, tuple(piece.placed(matrix) for piece in pieces), excess, colour)
+def _placed(part: Part, side: Side, motion: Motion, matrix: Array, max_excess_mm: float) -> ScenePart:
+    pieces, excess = faceted_pieces(part.solid, max_excess_mm)
+    placed = tuple(piece.placed(matrix) for piece in pieces)
+    return ScenePart(part.name, side, motion, part.kind, placed, excess, part.colour)
 
 
 def _arm_matrix(part: Part, setup: Setup) -> Array:
@@ -230,7 +217,8 @@ def _isocentre_patient(setup: Setup) -> Array:
     if isocentre.landmark not in known:
         raise GeometryError(f"isocentre.landmark = {isocentre.landmark!r}; allowed: {', '.join(known) or 'none known'}")
     left, head, front = isocentre.offset_mm
-    return known[isocentre.landmark] + np.array([left, -front, head])
+    point: Array = known[isocentre.landmark] + np.array([left, -front, head])
+    return point
 
 
 def _beyond_travel(room: Room, setup: Setup, couch: CouchPose) -> tuple[str, ...]:
@@ -259,8 +247,3 @@ def with_required(setup: Setup, required_mm: float, reason: str) -> Setup:
     """Return the set-up with one required clearance for every pair."""
     required = replace(setup.required, fixed_mm=required_mm, reason=reason, components=())
     return replace(setup, required=required)
-
-
-def turned_about_support(couch_deg: float) -> Array:
-    """Return T_fixed_support, shape (4, 4): the patient support turned by the couch angle."""
-    return transform(rotation_z(couch_deg), np.zeros(3))

@@ -2,18 +2,16 @@
 
 import math
 from dataclasses import dataclass
-from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from geometry.body import Body
+from geometry.landmarks import Landmark
 from geometry.machine import Part, Room
 from geometry.solids import Solid
 
 Array = NDArray[np.float64]
-
-Landmark = Literal["vertex", "chin", "sternal notch", "xiphoid", "navel", "symphysis"]
 
 
 @dataclass(frozen=True)

@@ -145,7 +145,7 @@ def _reach(tolerance_deg: float, steps: Steps) -> int:
 
 
 def _eroded(proved: NDArray[np.bool_], reach: int, axis: int) -> NDArray[np.bool_]:
-    """Return where all cells within `reach` along an axis are proved; cells beyond the plane do not count against it."""
+    """Return where all cells within `reach` along an axis are proved; none beyond the plane counts against it."""
     if reach == 0:
         return proved
     width = [(0, 0), (0, 0)]
@@ -153,5 +153,4 @@ def _eroded(proved: NDArray[np.bool_], reach: int, axis: int) -> NDArray[np.bool
     windows = np.lib.stride_tricks.sliding_window_view(
         np.pad(proved, width, constant_values=True), 2 * reach + 1, axis=axis
     )
-    eroded: NDArray[np.bool_] = windows.all(axis=-1)
-    return eroded
+    return np.asarray(windows.all(axis=-1))

@@ -8,17 +8,18 @@ from numpy.typing import NDArray
 
 from geometry.frames import cos_sin
 from geometry.kernel import Memory
-from geometry.plane_kernel import Angles, Field, Lists, sweep_tile
+from geometry.plane_kernel import Angles, Field, Lists, sweep_tiles
 from geometry.planes import Plane, planes_of
 from geometry.progress import Progress, Silent
 from geometry.scene import Scene
-from geometry.tasks import run_tiles
+from geometry.tasks import Tiles, run_tiles
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int32]
 
-# Poses of a task: small enough to cancel within a blink, large enough to share the pruning.
-TILE = 24
+# Poses each way that share a sifting of the pairs, and how many where only one axis turns.
+BLOCK = 12
+POSES = BLOCK * BLOCK
 
 
 @dataclass(frozen=True, eq=False)
@@ -88,14 +89,11 @@ def sweep_plane(
         np.full((rows, columns, 3), np.nan),
         np.full((rows, columns, 3), np.nan),
     )
-    tiles = [
-        (i, min(i + TILE, columns), j, min(j + TILE, rows))
-        for j in range(0, rows, TILE)
-        for i in range(0, columns, TILE)
-    ]
+    block = (1 if columns == 1 else POSES if rows == 1 else BLOCK, 1 if rows == 1 else POSES if columns == 1 else BLOCK)
+    tiles = np.array([(0, columns, j, min(j + block[1], rows)) for j in range(0, rows, block[1])])
 
-    def work(tile: tuple[int, int, int, int], memory: Memory, lists: Lists) -> None:
-        sweep_tile(plane.a, plane.b, plane.pairs, gantry, couch, tile, memory, lists, field)
+    def work(hand: Tiles, memory: Memory, lists: Lists) -> None:
+        sweep_tiles(plane.a, plane.b, plane.pairs, gantry, couch, hand, block, memory, lists, field)
 
     run_tiles(work, tiles, plane.pairs, progress, "exact clearance", threads)
     return field

@@ -3,14 +3,21 @@
 from dataclasses import dataclass
 from typing import Final, Literal, get_args
 
-from app.files.dicom import read_external_contour, read_plan_isocentres, read_plan_patient_position
+from app.files.dicom import (
+    read_external_contour,
+    read_plan_isocentres,
+    read_plan_patient_position,
+    structure_patient_position,
+)
 from app.files.reading import Table
 from app.files.shapes import mesh_of
-from app.files.values import LARGEST_MM, Limits
+from app.files.values import Limits
 from app.files.wording import printable
-from geometry.body import SIZES, Body
+from geometry.body import Body
+from geometry.body_sizes import MASS_RANGE_KG, SIZES, STATURE_RANGE_MM
 from geometry.frames import PATIENT_POSITIONS
-from geometry.setup import Landmark, Surface
+from geometry.landmarks import Landmark
+from geometry.setup import Surface
 from geometry.solids import Solid
 
 Source = Literal["body", "mesh", "structure set"]
@@ -25,7 +32,7 @@ _ARMS: Final[tuple[Arm, ...]] = get_args(Arm)
 _BUILDS: Final[tuple[Build, ...]] = ("mean", "man", "woman")
 _LEGS: Final[tuple[Legs, ...]] = get_args(Legs)
 _ON_BACK_OR_FRONT: Final = ("HFS", "HFP", "FFS", "FFP")
-_POSITIVE: Final = Limits(0.0, LARGEST_MM, above=True)
+_LARGEST_SLOPE: Final = Limits(0.0, 45.0)
 
 
 @dataclass(frozen=True)
@@ -53,14 +60,14 @@ def patient_of(top: Table) -> Patient:
 def _body(table: Table, position: str) -> Body | None:
     if position not in _ON_BACK_OR_FRONT:
         table.fault("position", f"'{position}' with a body made from sizes", f"one of {', '.join(_ON_BACK_OR_FRONT)}")
-    stature_mm = table.number("stature_mm", _POSITIVE)
-    mass_kg = table.optional_number("mass_kg", _POSITIVE)
+    stature_mm = table.number("stature_mm", Limits(*STATURE_RANGE_MM))
+    mass_kg = table.optional_number("mass_kg", Limits(*MASS_RANGE_KG))
     build = table.choice("build", _BUILDS, default="mean")
     sizes = _sizes(table)
     arm_left = table.choice("arm_left", _ARMS, default="at the side")
     arm_right = table.choice("arm_right", _ARMS, default="at the side")
     legs = table.choice("legs", _LEGS, default="together")
-    slope_deg = table.number("slope_deg", Limits(-90.0, 90.0), default=0.0)
+    slope_deg = table.number("slope_deg", _LARGEST_SLOPE, default=0.0)
     prone = position.endswith("P")
     return table.built(lambda: Body(stature_mm, mass_kg, build, sizes, arm_left, arm_right, legs, slope_deg, prone))
 
@@ -70,7 +77,9 @@ def _sizes(table: Table) -> tuple[tuple[str, float], ...]:
     sizes = table.table("sizes")
     if sizes is None:
         return ()
-    return tuple((name, sizes.number(name, _POSITIVE)) for name in SIZES if sizes.has(name))
+    return tuple(
+        (name, sizes.number(name, Limits(size.low, size.high))) for name, size in SIZES.items() if sizes.has(name)
+    )
 
 
 def _imported(table: Table, position: str, source: Source) -> Patient:
@@ -80,16 +89,19 @@ def _imported(table: Table, position: str, source: Source) -> Patient:
         solid = mesh_of(table)
         words = "closed surface mesh"
     else:
-        solid = _contours(table)
+        solid = _contours(table, position)
         words = "external contour of a structure set"
     surface = None if solid is None else table.built(lambda: Surface(solid, words, landmarks))
     return Patient(position, surface, isocentres)
 
 
-def _contours(table: Table) -> Solid | None:
+def _contours(table: Table, position: str) -> Solid | None:
     path = table.file("file")
     roi = table.optional_text("roi")
-    return table.attempted(lambda: read_external_contour(path, roi)) if path is not None else None
+    if path is None:
+        return None
+    _check_position(table, "file", table.attempted(lambda: structure_patient_position(path)), position)
+    return table.attempted(lambda: read_external_contour(path, roi))
 
 
 def _landmarks(table: Table) -> tuple[tuple[Landmark, Point], ...]:
@@ -104,7 +116,11 @@ def _plan(table: Table, position: str) -> tuple[Point, ...]:
     path = table.file("plan") if table.has("plan") else None
     if path is None:
         return ()
-    planned = table.attempted(lambda: read_plan_patient_position(path))
-    if planned is not None and planned != position:
-        table.fault("plan", f"a plan for patient position '{printable(planned)}'", f"'{position}', as position says")
+    _check_position(table, "plan", table.attempted(lambda: read_plan_patient_position(path)), position)
     return table.attempted(lambda: read_plan_isocentres(path)) or ()
+
+
+def _check_position(table: Table, key: str, stated: str | None, position: str) -> None:
+    """Note a fault where a DICOM file states a patient position that is not the set-up's."""
+    if stated is not None and stated != position:
+        table.fault(key, f"a file for patient position '{printable(stated)}'", f"'{position}', as position says")

@@ -22,7 +22,7 @@ S = TypeVar("S")
 _MOST_FAULTS: Final = 100
 _NAN: Final = math.nan
 _MM: Final = Limits()
-_ALLOWED_IN_MESSAGE: Final = re.compile(r"; allowed(?: is| are|:) ")
+_ALLOWED_IN_MESSAGE: Final = re.compile(r"; allowed(?: is| are|:) | is outside the range ")
 
 
 class Reading:

@@ -5,8 +5,8 @@ import tomllib
 from pathlib import Path
 from typing import Final
 
+from app.files.input_file import bad, checked_file
 from app.files.wording import described
-from geometry.errors import BadInput, Fault
 
 LARGEST_FILE_BYTES: Final = 2_000_000
 
@@ -27,11 +27,11 @@ def parsed_toml(path: Path, newest_format: int) -> dict[str, object]:
         message = str(error)
         position = _POSITION.search(message)
         place = position["where"] if position else ""
-        raise _bad(path, place, _POSITION.sub("", message), "TOML 1.0") from error
+        raise bad(path, place, _POSITION.sub("", message), "TOML 1.0") from error
     except RecursionError as error:
-        raise _bad(path, "", "lists or tables nested too deep", "a few levels") from error
+        raise bad(path, "", "lists or tables nested too deep", "a few levels") from error
     except ValueError as error:
-        raise _bad(path, "", f"a value that cannot be read ({str(error)[:100]})", "TOML 1.0") from error
+        raise bad(path, "", f"a value that cannot be read ({str(error)[:100]})", "TOML 1.0") from error
     _check_format(path, values, newest_format)
     return values
 
@@ -39,25 +39,18 @@ def parsed_toml(path: Path, newest_format: int) -> dict[str, object]:
 def _text(path: Path) -> str:
     """Return the text of a file that is not too large."""
     try:
-        if not path.exists():
-            raise _bad(path, "", "no such file", "an existing file")
-        if not path.is_file():
-            raise _bad(path, "", "not a file", "a file")
-        with path.open("rb") as stream:
-            content = stream.read(LARGEST_FILE_BYTES + 1)
-    except (OSError, ValueError) as error:
-        raise _bad(path, "", f"unreadable ({error})", "a file that can be read") from error
-    if len(content) > LARGEST_FILE_BYTES:
-        raise _bad(path, "", f"more than {LARGEST_FILE_BYTES} bytes", f"at most {LARGEST_FILE_BYTES} bytes")
+        content = checked_file(path, LARGEST_FILE_BYTES).read_bytes()
+    except OSError as error:
+        raise bad(path, "", f"unreadable ({error})", "a file that can be read") from error
     try:
         text = content.decode("utf-8-sig").replace("\r\n", "\n")
     except UnicodeDecodeError as error:
         line = content[: error.start].count(b"\n") + 1
-        raise _bad(path, f"line {line}", "bytes that are not UTF-8 text", "UTF-8 text") from error
+        raise bad(path, f"line {line}", "bytes that are not UTF-8 text", "UTF-8 text") from error
     deep = _DEEP_KEY.search(text)
     if deep:
         line = text.count("\n", 0, deep.start()) + 1
-        raise _bad(path, f"line {line}", "a key of more than 16 levels", "a few levels")
+        raise bad(path, f"line {line}", "a key of more than 16 levels", "a few levels")
     return text
 
 
@@ -65,13 +58,9 @@ def _check_format(path: Path, values: dict[str, object], newest: int) -> None:
     """Raise BadInput unless the format number is one that is read here."""
     allowed = str(newest) if newest == 1 else f"1 to {newest}"
     if "format" not in values:
-        raise _bad(path, "format", "nothing", allowed)
+        raise bad(path, "format", "nothing", allowed)
     number = values["format"]
     if isinstance(number, bool) or not isinstance(number, int) or number < 1:
-        raise _bad(path, "format", described(number), allowed)
+        raise bad(path, "format", described(number), allowed)
     if number > newest:
-        raise _bad(path, "format", f"format {described(number)}, written by a newer version", allowed)
-
-
-def _bad(path: Path, place: str, found: str, allowed: str) -> BadInput:
-    return BadInput([Fault(str(path), place, found, allowed)])
+        raise bad(path, "format", f"format {described(number)}, written by a newer version", allowed)

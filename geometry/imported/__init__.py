@@ -1,6 +1,6 @@
 """Surfaces that were measured or drawn elsewhere: closed triangle meshes and stacks of contours."""
 
-from geometry.imported.contours import ContourStack
-from geometry.imported.mesh import ClosedMesh
+from geometry.imported.contours import MOST_CONTOURS, MOST_POINTS, SAME_SLICE_MM, ContourStack
+from geometry.imported.mesh import MOST_TRIANGLES, ClosedMesh
 
-__all__ = ["ClosedMesh", "ContourStack"]
+__all__ = ["MOST_CONTOURS", "MOST_POINTS", "MOST_TRIANGLES", "SAME_SLICE_MM", "ClosedMesh", "ContourStack"]

@@ -1,26 +1,143 @@
-"""A solid told by outlines on parallel slices."""
+"""A solid told by outlines on slices across z, as an RT Structure Set has it. mm."""
 
-from dataclasses import dataclass
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass, field
+from functools import cached_property
+from itertools import pairwise
+from typing import Final
 
 import numpy as np
+import shapely
 from numpy.typing import NDArray
 
 from geometry.decompose import Faceted
+from geometry.errors import GeometryError
+from geometry.imported.contour_cells import Prism, connected_cells, enclosing_outline, parts_of
+from geometry.imported.levels import Level
+from geometry.imported.subdivision import enclosing_pieces
+from geometry.outlines import LARGEST_MM, checked_excess, number
 
 Array = NDArray[np.float64]
+Flags = NDArray[np.bool_]
+
+MOST_CONTOURS: Final = 2_000
+MOST_POINTS: Final = 500_000
+MOST_PIECES: Final = 2_000
+# Outlines whose heights differ by no more than this are on one slice.
+SAME_SLICE_MM: Final = 0.01
+# What has less area than this is widened, so that nothing that an outline says is lost.
+_SMALLEST_AREA_MM2: Final = 1e-3
+_WIDENED_MM: Final = 0.1
+# How far outlines are smoothed outwards before they are cut: what follows takes time with every point.
+_SMOOTHED_MM: Final = 0.25
 
 
 @dataclass(frozen=True, eq=False)
 class ContourStack:
-    """A solid told by outlines on slices across z."""
+    """The solid inside closed outlines on slices at two or more heights z.
 
-    contours: tuple[tuple[float, Array], ...]
-    max_slab_mm: float = 20.0
+    `contours`: height in mm and points, shape (n, 2), mm, of each outline, in any order. On a slice the solid is all
+    that any outline encloses: an outline within another counts as filled, since an envelope has no hollows. Between
+    two slices it is all that is in either; that contains the solid however it is interpolated between the two by
+    signed distance or by the nearest slice. Beyond the first and the last slice it goes on for half the distance to
+    the next.
+
+    The pieces contain all straight lines between neighbouring outlines, too (`contour_cells`). Cutting into pieces
+    ends where none stands out more than `wanted_excess_mm`, or at `most_pieces`.
+    """
+
+    contours: tuple[tuple[float, Array], ...] = field(repr=False)
+    wanted_excess_mm: float = 5.0
+    most_pieces: int = 200
+
+    def __post_init__(self) -> None:
+        if len(self.contours) > MOST_CONTOURS:
+            raise GeometryError(f"{len(self.contours)} contours; allowed: at most {MOST_CONTOURS}")
+        points = sum(len(outline) for _, outline in self.contours)
+        if points > MOST_POINTS:
+            raise GeometryError(f"{points} points of contours; allowed: at most {MOST_POINTS}")
+        contours = tuple(_checked_contour(k + 1, *contour) for k, contour in enumerate(self.contours))
+        object.__setattr__(self, "contours", contours)
+        object.__setattr__(self, "wanted_excess_mm", checked_excess(self.wanted_excess_mm))
+        object.__setattr__(self, "most_pieces", int(number("most_pieces", self.most_pieces, 1, MOST_PIECES)))
+        slices = _by_height(contours)
+        if len(slices) < 2:
+            raise GeometryError(f"contours on {len(slices)} slices; allowed: 2 or more, at different z")
 
     def faceted(self, max_excess_mm: float) -> Faceted:
-        """Return the pieces."""
-        raise NotImplementedError
+        """Return convex pieces that contain the solid, and their excess over it, measured from above.
 
-    def contains(self, points: Array) -> NDArray[np.bool_]:
-        """Tell which of `points` lie in the solid."""
-        raise NotImplementedError
+        What it comes to depends on the solid's folds: `wanted_excess_mm` and `max_excess_mm` say how much of it may be
+        due to fewer vertices, a quarter of the one or all of the other.
+        """
+        tolerance_mm = max(checked_excess(max_excess_mm), self.wanted_excess_mm / 4.0)
+        levels = [Level(prism.low_mm, prism.high_mm, ((prism.outline, 0.0),)) for prism in self._prisms]
+        enclosing = [enclosing_outline(outline, _SMOOTHED_MM) for _, outline in self._slices]
+        cells = connected_cells(_stacked(self._slices, enclosing))
+        return enclosing_pieces(cells, levels, self.wanted_excess_mm, self.most_pieces, tolerance_mm)
+
+    def contains(self, points: Array) -> Flags:
+        """Tell which of `points`, shape (n, 3), mm, lie in the solid; on its surface, rounding decides."""
+        inside = np.zeros(len(points), dtype=bool)
+        for prism in self._prisms:
+            here = np.flatnonzero((points[:, 2] >= prism.low_mm) & (points[:, 2] <= prism.high_mm))
+            inside[here] |= shapely.intersects_xy(prism.outline, points[here, 0], points[here, 1])
+        return inside
+
+    @cached_property
+    def _slices(self) -> tuple[tuple[float, shapely.Geometry], ...]:
+        return tuple((height, _filled(outlines)) for height, outlines in _by_height(self.contours))
+
+    @cached_property
+    def _prisms(self) -> tuple[Prism, ...]:
+        return _stacked(self._slices, [outline for _, outline in self._slices])
+
+
+def _stacked(
+    slices: Sequence[tuple[float, shapely.Geometry]], outlines: Sequence[shapely.Geometry]
+) -> tuple[Prism, ...]:
+    """Return prisms of the outlines from slice to slice, and for half a slice beyond the first and the last."""
+    heights, regions = zip(*slices, strict=True)
+    between = [
+        Prism(low, high, shapely.union(*pair), ends)
+        for (low, high), pair, ends in zip(pairwise(heights), pairwise(outlines), pairwise(regions), strict=True)
+    ]
+    start, end = (3.0 * heights[0] - heights[1]) / 2.0, (3.0 * heights[-1] - heights[-2]) / 2.0
+    return Prism(start, heights[0], outlines[0]), *between, Prism(heights[-1], end, outlines[-1])
+
+
+def _checked_contour(place: int, height: float, outline: Array) -> tuple[float, Array]:
+    """Return a contour as numbers; GeometryError names it by its place, from 1."""
+    z = number(f"z of contour {place}", height, -LARGEST_MM, LARGEST_MM)
+    points = np.array(outline, dtype=np.float64)
+    if points.ndim != 2 or points.shape[1] != 2 or len(points) < 3:
+        raise GeometryError(f"contour {place} of shape {points.shape}; allowed: 3 or more points of 2 coordinates")
+    wrong = np.flatnonzero(~np.all(np.abs(points) <= LARGEST_MM, axis=1))
+    if len(wrong):
+        raise GeometryError(
+            f"point {wrong[0] + 1} of contour {place} = {points[wrong[0]].tolist()} mm; "
+            f"allowed: numbers from -{LARGEST_MM:g} to {LARGEST_MM:g}"
+        )
+    points.setflags(write=False)
+    return z, points
+
+
+def _by_height(contours: Iterable[tuple[float, Array]]) -> list[tuple[float, list[Array]]]:
+    """Return the heights of the slices, rising, each with its outlines."""
+    slices: list[tuple[float, list[Array]]] = []
+    for height, outline in sorted(contours, key=lambda contour: contour[0]):
+        if not slices or height - slices[-1][0] > SAME_SLICE_MM:
+            slices.append((height, []))
+        slices[-1][1].append(outline)
+    return slices
+
+
+def _filled(outlines: Iterable[Array]) -> shapely.Geometry:
+    """Return all that any of the outlines encloses, holes filled.
+
+    An outline that crosses itself counts with all its loops, and where it has no width it is given some.
+    """
+    pieces = parts_of(shapely.make_valid([shapely.Polygon(outline) for outline in outlines]))
+    thin = shapely.area(pieces) < _SMALLEST_AREA_MM2
+    pieces[thin] = shapely.buffer(pieces[thin], _WIDENED_MM)
+    return shapely.union_all([shapely.Polygon(part.exterior) for part in parts_of(shapely.union_all(pieces))])

@@ -14,6 +14,8 @@ _FLAT_MM: Final = 1e-3
 # Planes of a simpler hull stand off by this, mm, so that rounding in their corners cannot bring them inside.
 _ROUNDING_MM: Final = 1e-6
 _FEW_VERTICES: Final = 24
+# Vertices among which the point of a hull that is nearest to another is sought.
+_NEAREST: Final = 50
 
 
 @dataclass(frozen=True, eq=False)
@@ -84,19 +86,22 @@ def simpler_hull(hull: Hull, tolerance_mm: float) -> Hull:
 def distance_beyond(hull: Hull, points: Array) -> float:
     """Return the greatest distance, mm, of any of `points`, shape (n, 3), to a hull, or a little more.
 
-    The nearest point is sought as a sum of the hull's vertices with weights that are not negative. Scaled to a sum of
-    1 they give a point of the hull, however good the search was, and the distance to it cannot be too small.
+    The nearest point is sought as a sum of the hull's nearest vertices with weights that are not negative. Scaled to a
+    sum of 1 they give a point of the hull, however good the search was, and the distance to it cannot be too small.
     """
     from scipy.optimize import nnls  # noqa: PLC0415
+    from scipy.spatial import cKDTree  # noqa: PLC0415
 
-    beyond = points[np.any(points @ hull.planes[:, :3].T + hull.planes[:, 3] > 10.0 * _ROUNDING_MM, axis=1)]
+    beyond = points[np.any(points @ hull.planes[:, :3].T + hull.planes[:, 3] > 0.0, axis=1)]
+    count = min(_NEAREST, len(hull.vertices))
+    _, nearest = cKDTree(hull.vertices).query(beyond, k=count)
     size = float(np.ptp(hull.vertices, axis=0).max())
-    distances = [0.0 if len(beyond) == len(points) else 10.0 * _ROUNDING_MM]
-    for point in beyond:
-        towards = np.vstack([(hull.vertices - point).T, np.full(len(hull.vertices), size)])
+    greatest = 0.0
+    for point, numbers in zip(beyond, nearest, strict=True):
+        towards = np.vstack([(hull.vertices[numbers] - point).T, np.full(count, size)])
         weights, _ = nnls(towards, [0.0, 0.0, 0.0, size])
-        distances.append(float(np.linalg.norm(towards[:3] @ weights)) / float(weights.sum()))
-    return max(distances)
+        greatest = max(greatest, float(np.linalg.norm(towards[:3] @ weights)) / float(weights.sum()))
+    return greatest
 
 
 def _off(planes: Array) -> Array:

@@ -7,7 +7,7 @@ level, the sections next to it say more; `with_neighbours` adds them as a second
 """
 
 import math
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Final
 
@@ -18,11 +18,13 @@ from numpy.typing import NDArray
 from geometry.imported.hulls import Hull
 
 Array = NDArray[np.float64]
-Region = shapely.Geometry
 
 # The figure found is at most this too large, mm and relative.
 _STEP_MM: Final = 0.1
 _STEP: Final = 0.02
+_SMOOTHED_MM: Final = 0.5
+# Sides of a quarter turn in grown regions.
+_QUARTER: Final = 6
 
 
 @dataclass(frozen=True, eq=False)
@@ -31,7 +33,7 @@ class Level:
 
     low_mm: float
     high_mm: float
-    regions: tuple[tuple[Region, float], ...]
+    regions: tuple[tuple[shapely.Geometry, float], ...]
 
 
 @dataclass(frozen=True, eq=False)
@@ -54,10 +56,10 @@ def with_neighbours(levels: Sequence[Level]) -> list[Level]:
 
 
 def coarser(levels: Sequence[Level], most: int) -> list[Level]:
-    """Return `levels` of one region each joined to at most `most`, without slack: for guidance, not as a bound."""
+    """Return `levels` of one region each joined to at most `most`, smoothed, without slack: no bound, but guidance."""
     size = -(-len(levels) // most)
     groups = [levels[start : start + size] for start in range(0, len(levels), size)]
-    regions = [shapely.union_all([level.regions[0][0] for level in group]) for group in groups]
+    regions = [shapely.union_all([level.regions[0][0] for level in group]).simplify(_SMOOTHED_MM) for group in groups]
     return [
         Level(group[0].low_mm, group[-1].high_mm, ((region, 0.0),))
         for group, region in zip(groups, regions, strict=True)
@@ -77,7 +79,8 @@ def measured(hull: Hull, levels: Sequence[Level], enough_mm: float) -> Measured:
     for shadow, height, level in crossed:
         if not _within(shadow, level, excess_mm):
             short_mm, excess_mm = _narrowed(shadow, level, excess_mm, most_mm)
-            where = np.array([*_uncovered(shadow, level, short_mm), height])
+            point = _uncovered(shadow, level, short_mm)
+            where = where if point is None else np.array([*point, height])
     return Measured(excess_mm, where)
 
 
@@ -86,14 +89,16 @@ def _within(shadow: shapely.Geometry, level: Level, bound_mm: float) -> bool:
 
     GEOS' buffers are polygons inscribed in the true ones, so that this errs towards no.
     """
-    return any(
-        slack_mm <= bound_mm and region.buffer(_across(bound_mm, slack_mm)).covers(shadow)
-        for region, slack_mm in level.regions
-    )
+    return any(reached.covers(shadow) for reached in _reached(shadow, level, bound_mm))
 
 
-def _across(bound_mm: float, slack_mm: float) -> float:
-    return math.sqrt(max(bound_mm**2 - slack_mm**2, 0.0))
+def _reached(shadow: shapely.Geometry, level: Level, bound_mm: float) -> Iterator[shapely.Geometry]:
+    """Yield, for each region of a level, the part of it near a shadow grown as far as the bound allows."""
+    left, low, right, high = shadow.bounds
+    for region, slack_mm in level.regions:
+        if slack_mm <= bound_mm:
+            near = shapely.clip_by_rect(region, left - bound_mm, low - bound_mm, right + bound_mm, high + bound_mm)
+            yield near.buffer(math.sqrt(bound_mm**2 - slack_mm**2), quad_segs=_QUARTER)
 
 
 def _narrowed(shadow: shapely.Geometry, level: Level, short_mm: float, most_mm: float) -> tuple[float, float]:
@@ -107,12 +112,12 @@ def _narrowed(shadow: shapely.Geometry, level: Level, short_mm: float, most_mm: 
     return low, high
 
 
-def _uncovered(shadow: shapely.Geometry, level: Level, bound_mm: float) -> tuple[float, float]:
-    """Return a point of the shadow that is not known to lie within a distance of the solid, or its middle."""
-    for region, slack_mm in level.regions:
-        shadow = shadow.difference(region.buffer(_across(bound_mm, slack_mm))) if slack_mm <= bound_mm else shadow
+def _uncovered(shadow: shapely.Geometry, level: Level, bound_mm: float) -> tuple[float, float] | None:
+    """Return a point of the shadow that is not known to lie within a distance of the solid, if rounding leaves one."""
+    for reached in _reached(shadow, level, bound_mm):
+        shadow = shadow.difference(reached)
     point = shadow.representative_point()
-    return (point.x, point.y) if not point.is_empty else (0.0, 0.0)
+    return None if point.is_empty else (point.x, point.y)
 
 
 def _shadow(hull: Hull, low: float, high: float) -> shapely.Geometry:

@@ -1,6 +1,6 @@
 """A solid bounded by a closed surface of triangles. mm."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 from typing import Final
 
@@ -10,8 +10,9 @@ from numpy.typing import NDArray
 
 from geometry.decompose import Faceted
 from geometry.errors import GeometryError
+from geometry.imported.connections import connected
 from geometry.imported.hulls import distance_beyond, hull_of, simpler_hull
-from geometry.imported.mesh_cells import MeshCell, Surface, connected
+from geometry.imported.mesh_cells import MeshCell, Surface
 from geometry.imported.sections import section_levels
 from geometry.imported.subdivision import enclosing_pieces
 from geometry.outlines import LARGEST_MM, checked_excess, number
@@ -37,9 +38,9 @@ class ClosedMesh:
     more than `wanted_excess_mm`, or at `most_pieces`.
     """
 
-    vertices: Array
-    faces: Indices
-    wanted_excess_mm: float = 3.0
+    vertices: Array = field(repr=False)
+    faces: Indices = field(repr=False)
+    wanted_excess_mm: float = 5.0
     most_pieces: int = 200
 
     def __post_init__(self) -> None:
@@ -56,10 +57,10 @@ class ClosedMesh:
     def faceted(self, max_excess_mm: float) -> Faceted:
         """Return convex pieces that contain the solid, and their excess, measured from above.
 
-        `max_excess_mm` is how far a piece may stand out beyond the hull of what it holds, for the sake of fewer
-        vertices. What the excess over the solid comes to depends on its folds, and is stated.
+        What it comes to depends on the solid's folds: `wanted_excess_mm` and `max_excess_mm` say how much of it may be
+        due to fewer vertices, a quarter of the one or all of the other.
         """
-        tolerance_mm = checked_excess(max_excess_mm)
+        tolerance_mm = max(checked_excess(max_excess_mm), self.wanted_excess_mm / 4.0)
         pieces: list[Array] = []
         excess_mm = 0.0
         folded = []
@@ -67,7 +68,8 @@ class ClosedMesh:
             hull = hull_of(surface.vertices[np.unique(surface.faces)])
             if hull.volume_mm3 <= abs(_volume_mm3(surface)) * (1.0 + _SAME_VOLUME):
                 simpler = simpler_hull(hull, tolerance_mm)
-                excess_mm = max(excess_mm, distance_beyond(hull, simpler.vertices))
+                if simpler is not hull:
+                    excess_mm = max(excess_mm, distance_beyond(hull, simpler.vertices))
                 pieces.append(simpler.vertices)
             else:
                 folded.append(surface)
@@ -96,7 +98,7 @@ def _cut(surfaces: list[Surface], wanted_mm: float, most: int, tolerance_mm: flo
     order = np.argsort(extent, kind="stable")
     turned = [Surface(vertices[:, order], surface.faces, surface.links) for surface in surfaces]
     cells = [MeshCell.whole(surface) for surface in turned]
-    faceted = enclosing_pieces(cells, section_levels(turned), wanted_mm, most, max(tolerance_mm, wanted_mm / 4.0))
+    faceted = enclosing_pieces(cells, section_levels(turned), wanted_mm, most, tolerance_mm)
     return Faceted(tuple(piece[:, np.argsort(order)] for piece in faceted.pieces), faceted.excess_mm)
 
 
@@ -106,8 +108,8 @@ def _checked_vertices(values: Array) -> Array:
         raise GeometryError(f"vertices of shape {vertices.shape}; allowed: 4 or more of 3 coordinates")
     wrong = np.flatnonzero(~np.all(np.abs(vertices) <= LARGEST_MM, axis=1))
     if len(wrong):
-        first = vertices[wrong[0]].tolist()
-        raise GeometryError(f"vertex {wrong[0] + 1} = {first} mm; allowed: numbers from -{LARGEST_MM:g} to {LARGEST_MM:g}")
+        first, allowed = vertices[wrong[0]].tolist(), f"numbers from -{LARGEST_MM:g} to {LARGEST_MM:g}"
+        raise GeometryError(f"vertex {wrong[0] + 1} = {first} mm; allowed: {allowed}")
     vertices.setflags(write=False)
     return vertices
 
@@ -121,7 +123,7 @@ def _checked_faces(values: Indices, vertex_count: int) -> Indices:
         raise GeometryError(f"{len(given)} triangles; allowed: 4 to {MOST_TRIANGLES}")
     if given.min() < 0 or given.max() >= vertex_count:
         raise GeometryError(f"faces name vertices {given.min()} to {given.max()}; allowed: 0 to {vertex_count - 1}")
-    faces = given.astype(np.int64)
+    faces: Indices = given.astype(np.int64)
     faces = faces[(faces[:, 0] != faces[:, 1]) & (faces[:, 1] != faces[:, 2]) & (faces[:, 2] != faces[:, 0])]
     start, end = faces.ravel(), np.roll(faces, -1, axis=1).ravel()
     edges, numbers = np.unique(np.sort(np.stack([start, end], axis=1), axis=1), axis=0, return_inverse=True)

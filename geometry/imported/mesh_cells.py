@@ -19,16 +19,17 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
+from geometry.imported.connections import connected
 from geometry.imported.hulls import Hull, hull_of
-from geometry.imported.subdivision import Cell
+from geometry.imported.subdivision import Cell, cut_positions
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 # Two triangles count as connected also where their shared edge misses the cell by this much.
 _TOUCHING_MM: Final = 1e-6
-# A cut stays this far from the ends of what it cuts, so that no slivers come off.
-_LEAST_CUT_MM: Final = 2.0
+# A cell of more triangles is cut across its longest extent without trying the other ways, which would take long.
+_MANY: Final = 4000
 _FLAT_MM: Final = 1e-9
 
 
@@ -73,32 +74,30 @@ class MeshCell:
 
     def cuts(self, through: Array) -> "list[list[Cell]]":
         """Return the cells on both sides of a plane near `through`, for each axis along which a cut is allowed."""
-        lowest, highest = self.hull.vertices.min(axis=0) + _LEAST_CUT_MM, self.hull.vertices.max(axis=0) - _LEAST_CUT_MM
         strips = [axis for axis in (0, 1) if np.isfinite([self.low[axis], self.high[axis]]).any()] or [0, 1]
-        ways: list[list[Cell]] = []
-        for axis in (2, *strips):
-            if lowest[axis] < highest[axis]:
-                at = float(np.clip(through[axis], lowest[axis], highest[axis]))
-                ways.append([*self._side(axis, at, upper=False), *self._side(axis, at, upper=True)])
-        return ways
+        allowed = [(axis, at) for axis, at in cut_positions(self.hull, through) if axis == 2 or axis in strips]
+        if len(self.triangles) > _MANY:
+            allowed = allowed[:1]
+        return [[*self._side(axis, at, upper=False), *self._side(axis, at, upper=True)] for axis, at in allowed]
 
     def _side(self, axis: int, at: float, *, upper: bool) -> "list[MeshCell]":
         """Return the patches on one side of a plane across an axis, each as a cell."""
         low, high = self.low.copy(), self.high.copy()
         (low if upper else high)[axis] = at
         triangles, kept = _clipped(self.triangles, axis, at, upper=upper)
-        owners = self.owners[kept]
-        faces = np.unique(owners)
+        owners, of_triangle = np.unique(self.owners[kept], return_inverse=True)
         ends = self.surface.links[self.links]
-        links = self.links[np.isin(ends[:, 2:], faces).all(axis=1) & _meets(self.surface.vertices[ends[:, :2]], low, high)]
+        near = _meets(self.surface.vertices[ends[:, :2]], low, high) & np.isin(ends[:, 2:], owners).all(axis=1)
+        links, pairs = self.links[near], np.searchsorted(owners, ends[near, 2:])
         at_side = [(triangles[:, :, k] <= low[k]) | (triangles[:, :, k] >= high[k]) for k in (0, 1)]
-        patch = _patches(faces, self.surface.links[links, 2:], np.unique(owners[np.any(at_side, axis=(0, 2))]))
-        of_triangle, of_link = patch[np.searchsorted(faces, owners)], patch[np.searchsorted(faces, self.surface.links[links, 2])]
+        together = np.unique(of_triangle[np.any(at_side, axis=(0, 2))])
+        patch = connected(len(owners), np.vstack([pairs, np.column_stack([together[:-1], together[1:]])]))
         cells = []
         for number in range(patch.max(initial=-1) + 1):
-            mine = of_triangle == number
+            mine, own_links = patch[of_triangle] == number, links[patch[pairs[:, 0]] == number]
             if np.ptp(triangles[mine, :, 2]) > _FLAT_MM:
-                cells.append(MeshCell(self.surface, triangles[mine], owners[mine], links[of_link == number], low, high))
+                own_faces = owners[of_triangle[mine]]
+                cells.append(MeshCell(self.surface, triangles[mine], own_faces, own_links, low, high))
         return cells
 
 
@@ -141,20 +140,5 @@ def _meets(edges: Array, low: Array, high: Array) -> NDArray[np.bool_]:
     beside = level & ((start < low - _TOUCHING_MM) | (start > high + _TOUCHING_MM))
     enters = np.where(level, 0.0, parts[0]).max(axis=1, initial=0.0)
     leaves = np.where(level, 1.0, parts[1]).min(axis=1, initial=1.0)
-    return (enters <= leaves) & ~beside.any(axis=1)
-
-
-def _patches(faces: Indices, linked: Indices, together: Indices) -> Indices:
-    """Return the number of the patch that each of the faces belongs to; those `together` count as one patch."""
-    chain = np.column_stack([together[:-1], together[1:]])
-    return connected(len(faces), np.searchsorted(faces, np.vstack([linked, chain])))
-
-
-def connected(count: int, pairs: Indices) -> Indices:
-    """Return the number of the connected part that each of `count` things belongs to, shape (count,), from 0."""
-    from scipy.sparse import coo_array  # noqa: PLC0415 - SciPy takes long to import
-    from scipy.sparse.csgraph import connected_components  # noqa: PLC0415
-
-    graph = coo_array((np.ones(len(pairs)), (pairs[:, 0], pairs[:, 1])), shape=(count, count))
-    parts: Indices = connected_components(graph, directed=False)[1].astype(np.int64)
-    return parts
+    meets: NDArray[np.bool_] = (enters <= leaves) & ~beside.any(axis=1)
+    return meets

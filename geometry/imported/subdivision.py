@@ -1,7 +1,9 @@
 """Cut the piece that stands out most, again and again."""
 
 import heapq
+import math
 from collections.abc import Sequence
+from dataclasses import dataclass
 from itertools import count
 from typing import Final, Protocol
 
@@ -10,7 +12,7 @@ from numpy.typing import NDArray
 
 from geometry.decompose import Faceted
 from geometry.imported.hulls import Hull, simpler_hull
-from geometry.imported.levels import Level, coarser, measured, with_neighbours
+from geometry.imported.levels import Level, Measured, coarser, measured, with_neighbours
 
 Array = NDArray[np.float64]
 
@@ -18,6 +20,12 @@ Array = NDArray[np.float64]
 _FINE_MM: Final = 0.1
 # Where to cut need not be known as well as what is left in the end.
 _LEVELS_WHILE_CUTTING: Final = 120
+# A cut is in vain for a part that keeps more than this of the excess; after some of them in a row it is left as it is.
+_GAIN: Final = 0.9
+_CUTS_IN_VAIN: Final = 6
+# A cut stays this far from the ends of what it cuts, mm and relative.
+_LEAST_CUT_MM: Final = 2.0
+_LEAST_CUT: Final = 0.1
 
 
 class Cell(Protocol):
@@ -29,35 +37,61 @@ class Cell(Protocol):
         ...
 
     def cuts(self, through: Array) -> "list[list[Cell]]":
-        """Return ways to cut the cell, each as the cells that result, near the point `through`, shape (3,), mm."""
+        """Return ways to cut the cell, each as the cells that result, near the point `through`, shape (3,), mm.
+
+        A cut across a longer extent comes before one across a shorter one.
+        """
         ...
 
 
-def subdivided(roots: Sequence[Cell], levels: Sequence[Level], wanted_mm: float, most: int) -> list[Hull]:
-    """Return hulls that together contain all that the cells contain.
+def cut_positions(hull: Hull, through: Array) -> list[tuple[int, float]]:
+    """Return axes and where to cut across them, mm, near a point; the longest extent first, and no slivers."""
+    lowest, highest = hull.vertices.min(axis=0), hull.vertices.max(axis=0)
+    extent = highest - lowest
+    least = np.maximum(_LEAST_CUT_MM, _LEAST_CUT * extent)
+    wide = [int(axis) for axis in np.argsort(-extent, kind="stable") if extent[axis] > 2.0 * least[axis]]
+    return [(k, float(np.clip(through[k], lowest[k] + least[k], highest[k] - least[k]))) for k in wide]
 
-    The cell whose hull has the greatest excess is cut where it is greatest, along the axis that leaves the least
-    volume, until every excess is at most `wanted_mm`, no cell can be cut, or there are `most` hulls.
+
+@dataclass(frozen=True, eq=False)
+class _Open:
+    """A cell that may be cut further, and how many cuts in a row were in vain for it."""
+
+    cell: Cell
+    found: Measured
+    vain: int
+
+
+def subdivided(roots: Sequence[Cell], levels: Sequence[Level], wanted_mm: float, most: int) -> list[Cell]:
+    """Return cells that together contain all that the cells contain.
+
+    The cell whose hull has the greatest excess is cut where it is greatest, in the way that leaves the least volume or,
+    with little between them, across the longest extent. That ends when every excess is at most `wanted_mm`, or no
+    cell can be cut any more without there being more than `most`.
     """
     order = count()
-    heap: list[tuple[float, int, Array, Cell]] = []
-    uncut: list[Cell] = []
+    heap: list[tuple[float, int, _Open]] = []
+    finished: list[Cell] = []
 
-    def put(cell: Cell) -> None:
+    def put(cell: Cell, before_mm: float, vain: int) -> None:
         found = measured(cell.hull, levels, wanted_mm)
-        heapq.heappush(heap, (-found.excess_mm, next(order), found.where, cell))
+        vain = vain + 1 if found.excess_mm > _GAIN * before_mm else 0
+        heapq.heappush(heap, (-found.excess_mm, next(order), _Open(cell, found, vain)))
 
     for root in roots:
-        put(root)
-    while heap and -heap[0][0] > wanted_mm and len(heap) + len(uncut) < most:
-        _, _, where, cell = heapq.heappop(heap)
-        ways = cell.cuts(where)
-        if not ways:
-            uncut.append(cell)
-            continue
-        for part in min(ways, key=lambda parts: sum(part.hull.volume_mm3 for part in parts)):
-            put(part)
-    return [cell.hull for cell in uncut] + [cell.hull for _, _, _, cell in heap]
+        put(root, math.inf, 0)
+    while heap and heap[0][2].found.excess_mm > wanted_mm:
+        _, _, worst = heapq.heappop(heap)
+        room = most - len(heap) - len(finished)
+        ways = worst.cell.cuts(worst.found.where) if worst.vain < _CUTS_IN_VAIN else []
+        left = [round(sum(part.hull.volume_mm3 for part in parts) / worst.cell.hull.volume_mm3, 2) for parts in ways]
+        best = ways[int(np.argmin(left))] if ways else [worst.cell] * (room + 1)
+        if len(best) > room:
+            finished.append(worst.cell)
+        else:
+            for part in best:
+                put(part, worst.found.excess_mm, worst.vain)
+    return finished + [cell.cell for _, _, cell in heap]
 
 
 def enclosing_pieces(
@@ -67,8 +101,8 @@ def enclosing_pieces(
 
     Hulls with many vertices give way to simpler ones about them, which stand out up to `tolerance_mm` further.
     """
-    cut = subdivided(roots, coarser(levels, _LEVELS_WHILE_CUTTING), wanted_mm, most)
-    hulls = [simpler_hull(hull, tolerance_mm) for hull in _not_covered(cut)]
+    cells = subdivided(roots, coarser(levels, _LEVELS_WHILE_CUTTING), wanted_mm, most)
+    hulls = [simpler_hull(hull, tolerance_mm) for hull in _not_covered([cell.hull for cell in cells])]
     excess_mm = _FINE_MM
     exact = with_neighbours(levels)
     for hull in hulls:

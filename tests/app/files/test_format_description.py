@@ -8,7 +8,7 @@ import pytest
 from app.files.patient_keys import LANDMARKS
 from app.files.room_file import read_room
 from app.files.setup_file import read_setup
-from geometry.body import SIZES
+from geometry.body_sizes import SIZES
 from geometry.frames import PATIENT_POSITIONS
 from geometry.machine import Stage
 
@@ -41,3 +41,10 @@ def test_it_names_every_word_that_the_readers_know() -> None:
     words += [f"`{name}`" for name in (*PATIENT_POSITIONS, *SIZES)]
     assert len(words) > 20
     assert [word for word in words if word not in text] == []
+
+
+def test_it_states_the_range_of_every_size_of_a_body() -> None:
+    text = DESCRIPTION.read_text(encoding="utf-8")
+    rows = re.findall(r"^\| `(\w+)` \| .* \| (\d+) to (\d+) \|$", text, re.MULTILINE)
+    stated = {name: (float(low), float(high)) for name, low, high in rows}
+    assert {name: stated.get(name) for name in SIZES} == {name: (size.low, size.high) for name, size in SIZES.items()}
