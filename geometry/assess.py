@@ -13,7 +13,7 @@ from geometry.progress import Progress, Silent
 from geometry.proof import Interval, Proof, Steps, prove, steps_over
 from geometry.scene import Scene, ScenePart, build_scene
 from geometry.setup import Setup
-from geometry.spans import ANGLE_DEG, Span, Tolerances, is_permitted, permitted_intervals, permitted_region, spans_at
+from geometry.spans import ANGLE_DEG, Span, Tolerances, is_permitted, permitted_region, permitted_runs, spans_at
 from geometry.states import CODE_OF, State
 from geometry.sweep import ClearanceMap, grid_deg, sweep
 
@@ -161,9 +161,9 @@ def _states(exact: ClearanceMap, proof: Proof, tolerances: Tolerances) -> NDArra
         return np.full(exact.clearance_mm.shape, CODE_OF[State.NO_TRAVEL], np.int8)
     state = np.full(exact.clearance_mm.shape, CODE_OF[State.UNPROVED], np.int8)
     for row, couch_deg in enumerate(exact.couch_deg):
-        _, intervals = permitted_intervals(proof, tolerances, float(couch_deg))
-        for low, high in intervals:
-            inside = (exact.gantry_deg >= low - ANGLE_DEG) & (exact.gantry_deg <= high + ANGLE_DEG)
+        _, runs = permitted_runs(proof, tolerances, float(couch_deg))
+        for run in runs:
+            inside = (exact.gantry_deg >= run.low_deg - ANGLE_DEG) & (exact.gantry_deg <= run.high_deg + ANGLE_DEG)
             state[row, inside] = CODE_OF[State.PERMITTED]
     state[np.isnan(exact.slack_mm)] = CODE_OF[State.UNPROVED]
     state[exact.slack_mm < 0.0] = CODE_OF[State.SHORT]

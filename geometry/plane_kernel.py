@@ -11,7 +11,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from geometry.kernel import BEYOND, FAILED, ROUNDING_MM, Hulls, Memory, compiled, distance, fall, inlined
+from geometry.kernel import BEYOND, FAILED, ROUNDING_MM, Hulls, Memory, compiled, distance, fall, inlined, pasted
 
 DEPTH = 24
 
@@ -97,7 +97,7 @@ def _between_spheres(a, i, b, j, turn):
     return np.sqrt(dx * dx + dy * dy + dz * dz) - a.radii[i] - b.radii[j]
 
 
-@compiled
+@pasted
 def gather(a, b, pairs, turn, at_a, at_b, memory, lists):
     """Put every pair into the list at depth 0, bounded by enclosing spheres at the pose (`at_a`, `at_b`), radians.
 
@@ -191,7 +191,7 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
     return tight, bound, bound_pair, slack_bound, slack_pair, slack
 
 
-@inlined
+@pasted
 def _keep(lists, depth, place, p, low, at_a, at_b, rate_a, rate_b):
     lists.pair[depth, place] = p
     lists.lower[depth, place] = low
@@ -201,7 +201,7 @@ def _keep(lists, depth, place, p, low, at_a, at_b, rate_a, rate_b):
     lists.rate_b[depth, place] = rate_b
 
 
-@inlined
+@pasted
 def _drop_settled(pairs, lists, depth, asked, near, tight, nearest, tightest):
     """Drop from the list at `depth` the asked pairs that, now that near and tight are known, cannot matter."""
     kept = 0
@@ -239,7 +239,7 @@ def _rise(high, falls, motion):
     return np.sqrt((high + falls) ** 2 + motion * motion)
 
 
-@inlined
+@pasted
 def _record(field, row, column, a, b, p, turn, memory):
     """Write pair p and its nearest points, from the corners and weights that its last query left, in a's system."""
     field.pair[row, column] = p
@@ -260,7 +260,7 @@ def _record(field, row, column, a, b, p, turn, memory):
             field.point_a[row, column, axis] += weight * a.vertices[va, axis]
 
 
-@compiled
+@pasted
 def _follow_leader(a, b, pairs, gantry, couch, cell, memory, p, field):
     """Write pair p into `field` at every pose of a block: no other pair matters beyond what that leaves.
 
@@ -282,7 +282,7 @@ def _follow_leader(a, b, pairs, gantry, couch, cell, memory, p, field):
     return near, near - pairs.required[p]
 
 
-@compiled
+@pasted
 def _walk_block(a, b, pairs, gantry, couch, cell, memory, lists, leader, field):
     """Find the nearest pair of the list at depth 1 at each pose of a block, in serpentines, carrying the bounds along.
 
@@ -297,7 +297,7 @@ def _walk_block(a, b, pairs, gantry, couch, cell, memory, lists, leader, field):
     return lists.pair[1, nearest]
 
 
-@inlined
+@pasted
 def _find_nearest(a, b, pairs, gantry, couch, row, column, memory, lists, leader, start, field):
     """Write clearance, slack and witness of one pose; return the place of the nearest pair in the list.
 
@@ -383,7 +383,7 @@ def sweep_tiles(
                 leader = _sweep_block(a, b, pairs, gantry, couch, cell, memory, lists, leader, field)
 
 
-@compiled
+@pasted
 def _sweep_block(a, b, pairs, gantry, couch, cell, memory, lists, leader, field):
     """Fill one block; `leader` is the nearest pair of the block before, -1 for none. Returns the last nearest one."""
     at_a, half_a, cos_a, sin_a = _middle(gantry, cell[0], cell[1])
@@ -396,7 +396,7 @@ def _sweep_block(a, b, pairs, gantry, couch, cell, memory, lists, leader, field)
     return _walk_block(a, b, pairs, gantry, couch, cell, memory, lists, leader, field)
 
 
-@inlined
+@pasted
 def _middle(angles, low, high):
     """Return the middle one of the angles [low, high), the half-width about it, its cosine and sine."""
     k = (low + high) // 2

@@ -74,7 +74,7 @@ class Proof:
             return self._least(slice(first, last))
         # A single couch angle on the border of two rows of cells: either row proves it.
         above = min(first, self.couch.count - 1)
-        below = max(above - 1, 0)
+        below = max(first - 1, 0)
         one, other = self._least(slice(above, above + 1)), self._least(slice(below, below + 1))
         better = np.where(np.isnan(one.clearance_mm), True, other.clearance_mm > one.clearance_mm)
         return Band(*(np.where(better, o, s) for o, s in zip(other.arrays(), one.arrays(), strict=True)))

@@ -10,7 +10,7 @@ from typing import NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from geometry.kernel import Hulls, Memory, compiled, inlined
+from geometry.kernel import Hulls, Memory, compiled, inlined, pasted
 from geometry.plane_kernel import Lists, Pairs, gather, sift, turn_between
 
 # A proved cell is still halved while its bound gives away more than this share of the slack at its middle, so that the
@@ -40,7 +40,7 @@ class Proved(NamedTuple):
     depth: NDArray[np.int8]
 
 
-@inlined
+@pasted
 def _middle(strip, first, count):
     """Return middle and half-width, radians, of steps [first, first + count) of a strip."""
     low = max(strip.start + first * strip.step, strip.low)
@@ -85,7 +85,7 @@ def prove_tiles(
     return evaluated
 
 
-@compiled
+@pasted
 def _prove_cell(a, b, pairs, gantry, couch, i, j, first, memory, lists, leader, proved):
     """Prove one of the first cells; `leader` is the nearest pair of the one before, -1 for none.
 

@@ -57,39 +57,49 @@ class Span:
         return self.gantry_to_deg - self.gantry_from_deg
 
 
-def permitted_intervals(proof: Proof, tolerances: Tolerances, couch_deg: float) -> tuple[Band, list[Interval]]:
-    """Return, for a couch reading, the proved band of couch angles and the permitted intervals of gantry readings."""
+@dataclass(frozen=True)
+class Run:
+    """Permitted gantry readings [low_deg, high_deg], and the proved steps [first, last) that they rest on."""
+
+    low_deg: float
+    high_deg: float
+    first: int
+    last: int
+
+
+def permitted_runs(proof: Proof, tolerances: Tolerances, couch_deg: float) -> tuple[Band, list[Run]]:
+    """Return, for a couch reading, the proved band of couch angles and the permitted runs of gantry readings."""
     around = tolerances.of_couch_deg
     band = proof.over_couch(couch_deg - around, couch_deg + around)
     low_end, high_end = tolerances.gantry_travel_deg
-    intervals = []
+    runs = []
     for first, last in band.runs():
         low, high = proof.gantry.span_deg(first, last)
         low = max(low + tolerances.of_gantry_deg, low_end)
         high = min(high - tolerances.of_gantry_deg, high_end)
         if low <= high + ANGLE_DEG:
-            intervals.append((low, max(low, high)))
-    return band, intervals
+            runs.append(Run(low, max(low, high), first, last))
+    return band, runs
 
 
 def is_permitted(proof: Proof, tolerances: Tolerances, gantry_deg: float, couch_deg: float) -> bool:
     """Tell whether a reading within the travel is permitted."""
-    _, intervals = permitted_intervals(proof, tolerances, couch_deg)
-    return any(low - ANGLE_DEG <= gantry_deg <= high + ANGLE_DEG for low, high in intervals)
+    _, runs = permitted_runs(proof, tolerances, couch_deg)
+    return any(run.low_deg - ANGLE_DEG <= gantry_deg <= run.high_deg + ANGLE_DEG for run in runs)
 
 
 def spans_at(
     proof: Proof, tolerances: Tolerances, scene: Scene, couch_deg: float, readout: Readout
 ) -> tuple[Span, ...]:
     """Return the spans of one couch reading, rising, their ends rounded inwards to the gantry's readout."""
-    band, intervals = permitted_intervals(proof, tolerances, couch_deg)
+    band, runs = permitted_runs(proof, tolerances, couch_deg)
     spans = []
-    for low, high in intervals:
-        start, stop = rounded_inwards((low, high), tolerances.gantry_travel_deg, readout)
+    for run in runs:
+        start, stop = rounded_inwards((run.low_deg, run.high_deg), tolerances.gantry_travel_deg, readout)
         if start > stop:
             continue
         around = tolerances.of_gantry_deg
-        columns = slice(*_covered(proof.gantry, start - around, stop + around))
+        columns = _covered(proof.gantry, start - around, stop + around, run)
         least = int(np.argmin(band.clearance_mm[columns]))
         machine = int(band.machine_part[columns][least])
         other = int(band.couch_part[columns][least])
@@ -134,10 +144,11 @@ def permitted_region(proof: Proof, tolerances: Tolerances) -> shapely.Geometry:
     return region.intersection(shapely.box(travel[0], travel[2], travel[1], travel[3]))
 
 
-def _covered(steps: Steps, low_deg: float, high_deg: float) -> tuple[int, int]:
-    """Return the steps that an interval overlaps, at least one."""
+def _covered(steps: Steps, low_deg: float, high_deg: float, run: Run) -> slice:
+    """Return the steps of a run that an interval overlaps; one at least, for an interval that is a border of it."""
     first, last = steps.overlapped(low_deg, high_deg)
-    return (first, last) if last > first else (min(first, steps.count - 1), min(first, steps.count - 1) + 1)
+    first = min(max(first, run.first), run.last - 1)
+    return slice(first, max(min(last, run.last), first + 1))
 
 
 def _reach(tolerance_deg: float, steps: Steps) -> int:

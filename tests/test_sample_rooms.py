@@ -303,7 +303,7 @@ def test_chart_has_permitted_and_forbidden_angles(name: str) -> None:
 def test_closed_bore_has_a_patient_who_fits_and_one_who_does_not() -> None:
     shares = {name: permitted(scene_of(name), 30.0, np.zeros(1)).mean() for name in SETUPS if name not in TURNING}
     assert shares == {
-        "closed_bore/lung_wing_board.setup.toml": 0.0,
+        "closed_bore/chest_wing_board.setup.toml": 0.0,
         "closed_bore/prostate.setup.toml": 1.0,
     }
 

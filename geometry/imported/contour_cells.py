@@ -22,7 +22,6 @@ import numpy as np
 import shapely
 from numpy.typing import NDArray
 
-from geometry.imported.connections import connected
 from geometry.imported.hulls import Hull, hull_of
 from geometry.imported.subdivision import Cell, cut_positions
 
@@ -105,21 +104,25 @@ class ContourCell:
 
 def connected_cells(prisms: Sequence[Prism]) -> list[ContourCell]:
     """Return the cells of prisms one upon the other: polygons are in the same cell where they stand on each other."""
+    from scipy.cluster.hierarchy import DisjointSet  # noqa: PLC0415 - SciPy takes long to import
+
     polygons = [_polygons(prism.outline) for prism in prisms]
     first = np.cumsum([0, *map(len, polygons)])
-    pairs = [np.empty((0, 2), dtype=np.int64)]
-    for k, (below, above) in enumerate(pairwise(polygons)):
-        pairs.append(np.argwhere(shapely.intersects(below[:, None], above[None, :])) + first[k : k + 2])
-    part = connected(int(first[-1]), np.vstack(pairs))
+    standing = DisjointSet(range(int(first[-1])))
+    for start, (below, above) in zip(first, pairwise(polygons), strict=False):
+        for one, other in np.argwhere(shapely.intersects(below[:, None], above[None, :])):
+            standing.merge(int(start + one), int(start + len(below) + other))
     cells = []
-    for number in range(part.max(initial=-1) + 1):
-        mine = [own[part[start:end] == number] for own, start, end in zip(polygons, first[:-1], first[1:], strict=True)]
+    for members in standing.subsets():
+        numbers = np.sort(list(members))
+        parts = np.split(numbers, np.searchsorted(numbers, first[1:-1]))
+        own = [every[part - start] for every, part, start in zip(polygons, parts, first[:-1], strict=True)]
         cells.append(
             ContourCell(
                 tuple(
-                    prism if len(own) == len(every) else prism.of(shapely.multipolygons(own))
-                    for prism, own, every in zip(prisms, mine, polygons, strict=True)
-                    if len(own)
+                    prism if len(some) == len(every) else prism.of(shapely.multipolygons(some))
+                    for prism, some, every in zip(prisms, own, polygons, strict=True)
+                    if len(some)
                 )
             )
         )

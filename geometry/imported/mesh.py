@@ -10,9 +10,8 @@ from numpy.typing import NDArray
 
 from geometry.decompose import Faceted
 from geometry.errors import GeometryError
-from geometry.imported.connections import connected
 from geometry.imported.hulls import distance_beyond, hull_of, simpler_hull
-from geometry.imported.mesh_cells import MeshCell, Surface
+from geometry.imported.mesh_cells import MeshCell, Surface, connected
 from geometry.imported.sections import section_levels
 from geometry.imported.subdivision import enclosing_pieces
 from geometry.outlines import LARGEST_MM, checked_excess, number

@@ -19,7 +19,6 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
-from geometry.imported.connections import connected
 from geometry.imported.hulls import Hull, hull_of
 from geometry.imported.subdivision import Cell, cut_positions
 
@@ -142,3 +141,16 @@ def _meets(edges: Array, low: Array, high: Array) -> NDArray[np.bool_]:
     leaves = np.where(level, 1.0, parts[1]).min(axis=1, initial=1.0)
     meets: NDArray[np.bool_] = (enters <= leaves) & ~beside.any(axis=1)
     return meets
+
+
+def connected(count: int, pairs: Indices) -> Indices:
+    """Return the number of the connected part that each of `count` things belongs to, shape (count,), from 0.
+
+    `pairs`, shape (n, 2), are the numbers of things that touch each other.
+    """
+    from scipy.sparse import coo_array  # noqa: PLC0415 - SciPy takes long to import
+    from scipy.sparse.csgraph import connected_components  # noqa: PLC0415
+
+    graph = coo_array((np.ones(len(pairs)), (pairs[:, 0], pairs[:, 1])), shape=(count, count))
+    parts: Indices = connected_components(graph, directed=False)[1].astype(np.int64)
+    return parts
