@@ -241,11 +241,13 @@ class _Maker:
         hip = np.array([side * spread, self.middle(1.05 * r), self.down(_SYMPHYSIS)])
         knee = np.array([side * knee_x, self.middle(0.70 * r), self.down(_KNEE)])
         ankle = np.array([side * ankle_x, self.middle(0.42 * r), self.down(_ANKLE)])
+        calf = knee + 0.33 * (ankle - knee)
+        calf[1] = self.middle(0.69 * r)
         return Group(
             (
                 _limb(hip, knee, r, 0.68 * r),
-                _limb(knee, knee + 0.35 * (ankle - knee), 0.66 * r, 0.66 * r),
-                _limb(knee + 0.3 * (ankle - knee), ankle, 0.66 * r, 0.40 * r),
+                _limb(knee, calf, 0.66 * r, 0.66 * r),
+                _limb(calf, ankle, 0.66 * r, 0.40 * r),
                 self.foot(ankle),
             )
         )

@@ -25,6 +25,7 @@ SETUP_FORMAT: Final = 1
 _WHOLE_TURN: Final = Limits(-360.0, 360.0)
 _DISTANCE: Final = Limits(-3000.0, 3000.0)
 _FORMS: Final = ("landmark", "dicom_mm", "from_plan")
+_OFFSETS: Final = ("left_mm", "head_mm", "front_mm")
 _MOST_FITTED: Final = 100
 
 
@@ -114,7 +115,9 @@ def _isocentre(top: Table, patient: Patient) -> Isocentre:
     table = top.required_table("isocentre")
     forms = [form for form in _FORMS if table.has(form)]
     if len(forms) != 1:
-        table.ignore_rest()
+        # Asking makes every key known, so that a misspelt one is told beside this fault.
+        for key in _OFFSETS:
+            table.has(key)
         table.fault("", " and ".join(forms) or "none of them", f"exactly one of {', '.join(_FORMS)}")
         return Isocentre(None)
     if forms == ["landmark"]:
@@ -133,7 +136,7 @@ def _from_landmark(table: Table, patient: Patient) -> Isocentre:
         known = [name for name, _ in patient.envelope.landmarks_mm]
         if landmark not in known:
             table.fault("landmark", f"'{landmark}', not among patient.landmarks", one_of(known))
-    offsets = [table.number(key, _DISTANCE, default=0.0) for key in ("left_mm", "head_mm", "front_mm")]
+    offsets = [table.number(key, _DISTANCE, default=0.0) for key in _OFFSETS]
     left_mm, head_mm, front_mm = offsets
     return Isocentre(landmark, (left_mm, head_mm, front_mm))
 
