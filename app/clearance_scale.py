@@ -14,6 +14,8 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
+from app.colours import relative_luminance, rgb
+
 Array = NDArray[np.float64]
 
 # Close together where decisions are made. Beyond the last one nothing changes any more.
@@ -52,23 +54,6 @@ class Band:
     def is_dark(self) -> bool:
         """Tell whether light letters read better on it (relative luminance of WCAG 2.1)."""
         return relative_luminance(self.colour) < 0.18
-
-
-def relative_luminance(colour: str) -> float:
-    """Return the relative luminance, 0 to 1, of "#rrggbb" (WCAG 2.1, "relative luminance")."""
-    red, green, blue = (linear_light(channel) for channel in rgb(colour))
-    return 0.2126 * red + 0.7152 * green + 0.0722 * blue
-
-
-def linear_light(channel: float) -> float:
-    """Return the linear light, 0 to 1, of an sRGB channel, 0 to 1 (IEC 61966-2-1)."""
-    return channel / 12.92 if channel <= 0.04045 else ((channel + 0.055) / 1.055) ** 2.4
-
-
-def rgb(colour: str) -> tuple[float, float, float]:
-    """Return red, green and blue, 0 to 1, of "#rrggbb"."""
-    red, green, blue = (int(colour[i : i + 2], 16) / 255.0 for i in (1, 3, 5))
-    return red, green, blue
 
 
 def places(clearance_mm: Array) -> Array:

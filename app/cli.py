@@ -116,6 +116,7 @@ def _map(chosen: argparse.Namespace) -> int:
     from app.files.provenance import provenance_of  # noqa: PLC0415
     from app.files.setup_file import read_setup  # noqa: PLC0415
     from geometry.assess import Options, assess  # noqa: PLC0415
+    from geometry.prepare import prepare_kernels  # noqa: PLC0415
     from geometry.scene import with_required  # noqa: PLC0415
 
     if not chosen.out and chosen.grid is None:
@@ -136,8 +137,7 @@ def _map(chosen: argparse.Namespace) -> int:
     )
     start = time.monotonic()
     with TerminalProgress(quiet=chosen.quiet) as progress:
-        # A first run compiles, which no fraction can be told of.
-        progress.report(0.0, "preparing")
+        prepare_kernels(progress)
         assessment = _named(chosen.setup, lambda: assess(setup, options, progress))
         provenance = provenance_of(assessment.scene, options, datetime.datetime.now().astimezone().date())
         for path in chosen.out:

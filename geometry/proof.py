@@ -151,13 +151,13 @@ def prove(
     )
     evaluations = 0
     for plane in planes_of(scene):
-        proved, evaluated = _prove_plane(plane, gantry, couch, progress, window, threads)
+        proved, evaluated = prove_plane(plane, gantry, couch, progress, window, threads)
         evaluations += evaluated
         _merge(result, plane, proved)
     return replace(result, evaluations=evaluations)
 
 
-def _prove_plane(
+def prove_plane(
     plane: Plane,
     gantry: Steps,
     couch: Steps,
@@ -165,6 +165,7 @@ def _prove_plane(
     window: tuple[Interval, Interval] | None,
     threads: int | None,
 ) -> tuple[Proved, int]:
+    """Prove one plane; see `prove`. Returns what is proved and the number of cells evaluated."""
     columns = gantry.count if plane.with_gantry else 1
     rows = couch.count if plane.with_couch else 1
     proved = Proved(

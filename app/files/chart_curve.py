@@ -3,6 +3,7 @@
 from typing import Final
 
 import numpy as np
+from matplotlib.artist import Artist
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
@@ -35,7 +36,12 @@ _PERMITTED: Final = EDGE_COLOURS[3]
 # The bar of permitted angles, as shares of the chart's height.
 _BAR: Final = 0.055
 _ROOM: Final = 0.045
-_UNPROVED_HATCH: Final = Hatch("no valid distance", "#ffffff", "#59636e", "......")
+_HATCHES: Final = (
+    (State.SHORT, Hatch("short of what is required", "none", "#8b939b", "////")),
+    (State.UNPROVED, Hatch("unproved, not permitted", "none", "#8b939b", "....")),
+    (State.CONTACT, CONTACT_HATCH),
+    (State.NO_TRAVEL, NO_TRAVEL_HATCH),
+)
 
 
 def curve_page(assessment: Assessment, provenance: Provenance) -> Figure:
@@ -56,7 +62,7 @@ def curve_page(assessment: Assessment, provenance: Provenance) -> Figure:
     axes.set_ylabel("Clearance, mm", fontsize=9, color=INK)
     axes.set_yticks([tick for tick in axes.get_yticks() if 0.0 <= tick <= curve.top_mm])
     axes.set_title(curve.fixed_text, fontsize=9, color=PALE_INK, loc="left", pad=26.0 if curve.own else 6.0)
-    legend(axes, _samples(), columns=5)
+    legend(axes, _samples(), columns=7)
     return figure
 
 
@@ -71,8 +77,8 @@ class _Curve:
         self.angles_deg: Array = exact.gantry_deg if self.over_gantry else exact.couch_deg
         self.clearance_mm: Array = exact.clearance_mm[line]
         self.state: NDArray[np.int8] = assessment.state[line]
-        # What the pair with the least slack must keep, which is what the proof works against.
-        self.required_mm: Array = self.clearance_mm - exact.slack_mm[line]
+        required = assessment.scene.setup.required
+        self.required_mm = [required.of_pair_mm(with_patient=flag) for flag in (False, True)]
         self.name = "Gantry" if self.over_gantry else "Couch"
         self.own = scales.gantry if self.over_gantry else scales.couch
         low, high = float(self.angles_deg[0]), float(self.angles_deg[-1])
@@ -86,9 +92,8 @@ class _Curve:
     @property
     def top_mm(self) -> float:
         """Where the chart ends: above everything, and no less than a readable range."""
-        shown = np.concatenate([self.clearance_mm, self.required_mm])
-        shown = shown[np.isfinite(shown)]
-        return max(60.0, 1.12 * float(shown.max())) if len(shown) else 60.0
+        known = self.clearance_mm[np.isfinite(self.clearance_mm)]
+        return max(60.0, 1.12 * max(self.required_mm), 1.12 * float(known.max(initial=0.0)))
 
     def _permitted(self, assessment: Assessment) -> list[tuple[float, float]]:
         if self.over_gantry:
@@ -110,9 +115,9 @@ def _draw(axes: Axes, curve: _Curve) -> None:
     clearance = np.where(known, curve.clearance_mm, np.nan)
     axes.fill_between(curve.angles_deg, 0.0, clearance, color=EDGE_COLOURS[8], alpha=0.35, linewidth=0.0, zorder=1)
     axes.plot(curve.angles_deg, clearance, color=INK, linewidth=1.8, zorder=4)
-    axes.plot(curve.angles_deg, curve.required_mm, color=REQUIRED, linewidth=1.6, linestyle=(0, (4, 1.6)), zorder=5)
-    for state, hatch in ((State.CONTACT, CONTACT_HATCH), (State.UNPROVED, _UNPROVED_HATCH)):
-        for low, high in curve.runs(state) if state is State.CONTACT or not known.all() else []:
+    _draw_required(axes, curve)
+    for state, hatch in _HATCHES:
+        for low, high in curve.runs(state):
             hatched_box(axes, (low, high), (0.0, curve.top_mm), hatch)
     if known.any():
         _mark_least(axes, curve)
@@ -133,17 +138,34 @@ def _draw(axes: Axes, curve: _Curve) -> None:
         )
 
 
+def _draw_required(axes: Axes, curve: _Curve) -> None:
+    """Draw what pairs of parts must keep: one line or, where the patient's uncertainties count, two."""
+    machine, patient = curve.required_mm
+    lines = [(patient, "required", "bottom")]
+    if patient > machine:
+        lines = [
+            (patient, "required, with patient or device", "bottom"),
+            (machine, "required, machine and room", "top"),
+        ]
+    for level, words, place in lines:
+        axes.axhline(level, color=REQUIRED, linewidth=1.5, linestyle="--", zorder=5)
+        note = axes.text(0.99, level, f" {words} {level:.1f} mm", transform=axes.get_yaxis_transform())
+        note.set(ha="right", va=place, fontsize=7.5, color=REQUIRED, zorder=6)
+
+
 def _mark_least(axes: Axes, curve: _Curve) -> None:
     """Write the smallest clearance at its place; what it means is the legend's and the table's business."""
     place = int(np.nanargmin(curve.clearance_mm))
     angle, least = float(curve.angles_deg[place]), float(curve.clearance_mm[place])
-    centre = sum(curve.limits) / 2.0
+    share = (angle - curve.limits[0]) / (curve.limits[1] - curve.limits[0])
+    # Under the curve there is nothing but its shade; near the foot there are the required lines.
+    below = least > 0.3 * curve.top_mm
     axes.annotate(
         f"least {least:.1f} mm at {number_text(reading_deg(angle))}°",
         (angle, least),
-        xytext=(12 if angle < centre else -12, 14),
+        xytext=(12 if share < 0.1 else -12 if share > 0.9 else 0, -22 if below else 40),
         textcoords="offset points",
-        ha="left" if angle < centre else "right",
+        ha="left" if share < 0.1 else "right" if share > 0.9 else "center",
         fontsize=8.5,
         color=INK,
         arrowprops={"arrowstyle": "-", "color": INK, "linewidth": 0.8},
@@ -151,11 +173,10 @@ def _mark_least(axes: Axes, curve: _Curve) -> None:
     )
 
 
-def _samples() -> list[object]:
+def _samples() -> list[Artist]:
     return [
         Patch(facecolor=_PERMITTED, edgecolor=INK, linewidth=1.2, label="permitted"),
         Line2D([], [], color=INK, linewidth=1.8, label="clearance"),
-        Line2D([], [], color=REQUIRED, linewidth=1.6, linestyle=(0, (4, 1.6)), label="required clearance"),
-        CONTACT_HATCH.patch(),
-        NO_TRAVEL_HATCH.patch(),
+        Line2D([], [], color=REQUIRED, linewidth=1.5, linestyle="--", label="required clearance"),
+        *(hatch.patch() for _, hatch in _HATCHES),
     ]

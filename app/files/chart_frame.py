@@ -6,7 +6,9 @@ from dataclasses import dataclass
 from typing import Final
 
 import numpy as np
+from matplotlib.artist import Artist
 from matplotlib.axes import Axes
+from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.figure import Figure
 from matplotlib.patches import Patch, Rectangle
 from numpy.typing import NDArray
@@ -31,7 +33,6 @@ _BOTTOM: Final = 0.275
 # How many letters fill a line at the foot, and in bold.
 _CHARACTERS: Final = 215
 _BOLD_CHARACTERS: Final = 175
-_LONGEST_TITLE: Final = 80
 _MOST_FOOT_LINES: Final = 9
 
 
@@ -56,6 +57,8 @@ NO_TRAVEL_HATCH: Final = Hatch("no travel", NO_TRAVEL, "#9aa1a8", "----")
 def new_page(provenance: Provenance) -> Figure:
     """Return a page with title, marks and foot; the chart's own place is left free."""
     figure = Figure(figsize=PAGE, facecolor="white")
+    # It can tell how wide a text is before anything is saved.
+    FigureCanvasAgg(figure)
     _title(figure, provenance)
     _foot(figure, provenance)
     return figure
@@ -128,7 +131,7 @@ def no_travel_note(axes: Axes, provenance: Provenance) -> None:
     )
 
 
-def legend(axes: Axes, handles: list[object], columns: int) -> None:
+def legend(axes: Axes, handles: list[Artist], columns: int) -> None:
     """Place the legend under the chart."""
     axes.legend(
         handles=handles,
@@ -148,19 +151,22 @@ def legend(axes: Axes, handles: list[object], columns: int) -> None:
 def _title(figure: Figure, provenance: Provenance) -> None:
     options = provenance.options
     _text(figure, _LEFT, 0.955, "Permitted gantry and couch angles", 15, weight="bold")
-    _text(figure, _LEFT, 0.928, _shortened(provenance.setup), 10.5)
-    _text(figure, _LEFT, 0.905, _shortened(provenance.room), 10.5)
+    # Two marks stand beside the title; a third one needs room beside the names.
+    right = _RIGHT if len(provenance.marks) < 3 else _LEFT + 0.5
+    _text(figure, _LEFT, 0.924, provenance.setup, 10.5, right=right)
+    _text(figure, _LEFT, 0.902, provenance.room, 10.5, right=right)
     facts = (
         f"{provenance.date.isoformat()}   Wideberth {provenance.version}   "
         f"fingerprint {provenance.short_fingerprint}   "
         f"grid {options.gantry_step_deg:g}° × {options.couch_step_deg:g}°, edges {options.edge_deg:g}°, "
         f"readouts ±{options.gantry_tolerance_deg:g}° and ±{options.couch_tolerance_deg:g}°   {provenance.survey}"
     )
-    _text(figure, _LEFT, 0.881, _shortened(facts, 190), 7.5, colour=PALE_INK)
+    _text(figure, _LEFT, 0.881, facts, 7.5, colour=PALE_INK, right=right)
+    top = 0.955 if len(provenance.marks) < 2 else 0.975
     for i, mark in enumerate(provenance.marks):
         figure.text(
             _RIGHT,
-            0.955 - 0.031 * i,
+            top - 0.029 * i,
             mark,
             ha="right",
             va="center",
@@ -201,10 +207,17 @@ def _wrapped(text: str, characters: int) -> list[str]:
 
 
 def _text(
-    figure: Figure, x: float, y: float, text: str, size: float, colour: str = INK, weight: str = "normal"
+    figure: Figure,
+    x: float,
+    y: float,
+    text: str,
+    size: float,
+    colour: str = INK,
+    weight: str = "normal",
+    right: float = _RIGHT,
 ) -> None:
-    figure.text(x, y, text, fontsize=size, color=colour, fontweight=weight, va="center", parse_math=False)
-
-
-def _shortened(text: str, longest: int = _LONGEST_TITLE) -> str:
-    return text if len(text) <= longest else text[: longest - 1] + "…"
+    """Write a line, in smaller letters where it would reach beyond `right`."""
+    drawn = figure.text(x, y, text, fontsize=size, color=colour, fontweight=weight, va="center", parse_math=False)
+    too_wide = drawn.get_window_extent().width / ((right - x) * figure.bbox.width)
+    if too_wide > 1.0:
+        drawn.set_fontsize(size / too_wide)

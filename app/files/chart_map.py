@@ -4,6 +4,7 @@ from typing import Final
 
 import numpy as np
 import shapely
+from matplotlib.artist import Artist
 from matplotlib.axes import Axes
 from matplotlib.cm import ScalarMappable
 from matplotlib.colors import LinearSegmentedColormap, Normalize
@@ -40,6 +41,7 @@ Array = NDArray[np.float64]
 _CONTOURS_MM: Final = (50.0, 100.0, 150.0, 200.0, 300.0)
 # A gap that no angle changes is a round number of mm as a rule; a contour just there would trace rounding errors.
 _BELOW_ROUND_MM: Final = 0.01
+_CONTOUR_STEP_DEG: Final = 5.0
 _SHORT_HATCH: Final = Hatch("short of what is required", "none", "#ffffff", "////")
 _UNPROVED_HATCH: Final = Hatch("unproved, not permitted", "none", "#ffffff", "......")
 _HATCHES: Final = (
@@ -60,18 +62,20 @@ def map_page(assessment: Assessment, provenance: Provenance) -> Figure:
     axes.set_xlim(*gantry)
     axes.set_ylim(*couch)
     _fill_outside(axes, assessment, gantry, couch)
+    with_contours = _is_fine(assessment) and not assessment.scene.no_travel
     if assessment.scene.no_travel:
         hatched_box(axes, gantry, couch, NO_TRAVEL_HATCH)
         no_travel_note(axes, provenance)
     else:
         _shade(axes, assessment)
         _hatch_states(axes, assessment)
-        _contours(axes, assessment)
+        if with_contours:
+            _contours(axes, assessment)
         _outline(axes, assessment.permitted_region)
     label_angles(axes, "x", *gantry, "Gantry", scales.gantry)
     label_angles(axes, "y", *couch, "Couch", scales.couch)
     _colour_scale(axes, shifted=scales.couch is not None)
-    legend(axes, _samples(), columns=6)
+    legend(axes, _samples(with_contours), columns=6)
     return figure
 
 
@@ -121,28 +125,48 @@ def _shade(axes: Axes, assessment: Assessment) -> None:
 
 
 def _hatch_states(axes: Axes, assessment: Assessment) -> None:
-    """Lay a texture over every state but "permitted", half-way to the next grid angle."""
-    exact = assessment.map
+    """Lay a texture over the cells of every state but "permitted"."""
     for state, hatch in _HATCHES:
-        there = (assessment.state == CODE_OF[state]).astype(float)
-        if there.any() and min(there.shape) > 1:
-            filled = axes.contourf(
-                exact.gantry_deg,
-                exact.couch_deg,
-                there,
-                levels=[0.5, 1.5],
-                colors=[hatch.face],
-                hatches=[hatch.pattern],
+        region = _region_of(assessment, state)
+        if not region.is_empty:
+            axes.add_patch(
+                PathPatch(
+                    outline_of(region),
+                    facecolor=hatch.face,
+                    edgecolor=hatch.line,
+                    hatch=hatch.pattern,
+                    linewidth=0.0,
+                    zorder=2,
+                )
             )
-            filled.set_edgecolor(hatch.line)
-            filled.set_linewidth(0.0)
-            filled.set_zorder(2)
+
+
+def _region_of(assessment: Assessment, state: State) -> shapely.Geometry:
+    """Return the union of the cells around the grid angles in a state."""
+    x, y = _borders(assessment.map.gantry_deg), _borders(assessment.map.couch_deg)
+    there = np.pad(assessment.state == CODE_OF[state], ((0, 0), (1, 1))).astype(np.int8)
+    change = np.diff(there, axis=1)
+    rows, starts = np.nonzero(change == 1)
+    _, stops = np.nonzero(change == -1)
+    return shapely.union_all(shapely.box(x[starts], y[rows], x[stops], y[rows + 1]))
+
+
+def outline_of(region: shapely.Geometry) -> Outline:
+    """Return the borders of a region of polygons, holes included, as one path."""
+    polygons = [part for part in shapely.get_parts(region) if isinstance(part, shapely.Polygon) and not part.is_empty]
+    rings = [ring for polygon in polygons for ring in (polygon.exterior, *polygon.interiors)]
+    return Outline.make_compound_path(*(Outline(shapely.get_coordinates(ring), closed=True) for ring in rings))
+
+
+def _is_fine(assessment: Assessment) -> bool:
+    """Tell whether contours between the grid angles say something."""
+    exact = assessment.map
+    steps = [float(np.diff(angles).max(initial=0.0)) for angles in (exact.gantry_deg, exact.couch_deg)]
+    return min(exact.clearance_mm.shape) > 1 and max(steps) <= _CONTOUR_STEP_DEG
 
 
 def _contours(axes: Axes, assessment: Assessment) -> None:
     exact = assessment.map
-    if min(exact.clearance_mm.shape) < 2:
-        return
     grid = (exact.gantry_deg, exact.couch_deg)
     clearance = np.ma.masked_invalid(exact.clearance_mm)
     levels = [level - _BELOW_ROUND_MM for level in _CONTOURS_MM]
@@ -163,11 +187,8 @@ def _label_contours(axes: Axes, lines: ContourSet) -> None:
 
 def _outline(axes: Axes, region: shapely.Geometry) -> None:
     """Draw the border of the permitted region."""
-    for polygon in shapely.get_parts(region):
-        if not isinstance(polygon, shapely.Polygon) or polygon.is_empty:
-            continue
-        rings = [polygon.exterior, *polygon.interiors]
-        path = Outline.make_compound_path(*(Outline(shapely.get_coordinates(ring), closed=True) for ring in rings))
+    if not region.is_empty:
+        path = outline_of(region)
         axes.add_patch(
             PathPatch(path, facecolor="none", edgecolor=PERMITTED_EDGE, linewidth=1.6, joinstyle="round", zorder=5)
         )
@@ -183,12 +204,13 @@ def _colour_scale(axes: Axes, *, shifted: bool) -> None:
     scale.set_label("Clearance, mm", fontsize=8, color=INK)
 
 
-def _samples() -> list[object]:
+def _samples(with_contours: bool) -> list[Artist]:
+    contour = Line2D(
+        [], [], color=REQUIRED, linewidth=1.4, linestyle=(0, (4, 1.6)), label="clearance equals what is required"
+    )
     return [
         Patch(facecolor=EDGE_COLOURS[7], edgecolor=PERMITTED_EDGE, linewidth=1.6, label="permitted"),
-        Line2D(
-            [], [], color=REQUIRED, linewidth=1.4, linestyle=(0, (4, 1.6)), label="clearance equals what is required"
-        ),
+        *([contour] if with_contours else []),
         _over_colour(_SHORT_HATCH),
         _over_colour(_UNPROVED_HATCH),
         CONTACT_HATCH.patch(),

@@ -43,17 +43,13 @@ def write_chart_picture(assessment: Assessment, provenance: Provenance, path: Pa
     suffix = path.suffix.lower()
     if suffix not in SUFFIXES:
         raise BadInput([Fault(str(path), "", f"the suffix '{path.suffix}'", f"one of {', '.join(SUFFIXES)}")])
+    style = _STYLE | {"font.family": _fonts_here()}
     # Hatches take their width, and text its font, when they are made and again when they are drawn.
-    with rc_context(_STYLE | {"font.family": _fonts_here()}):  # type: ignore[arg-type]  # keys are literals in the stub
+    with rc_context(style), warnings.catch_warnings():  # type: ignore[arg-type]  # keys are literals in the stub
+        # A letter that no font here has becomes an empty box; the file's properties still hold it.
+        warnings.filterwarnings("ignore", message="Glyph .* missing from")
         page = chart_page(assessment, provenance)
-
-        def write(stream: BinaryIO) -> None:
-            with warnings.catch_warnings():
-                # A letter that no font here has becomes an empty box; the file's properties still hold it.
-                warnings.filterwarnings("ignore", message="Glyph .* missing from")
-                _save(page, stream, suffix, provenance)
-
-        write_atomically(path, write)
+        write_atomically(path, lambda stream: _save(page, stream, suffix, provenance))
 
 
 def chart_page(assessment: Assessment, provenance: Provenance) -> Figure:

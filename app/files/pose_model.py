@@ -18,7 +18,7 @@ import trimesh
 from numpy.typing import NDArray
 from trimesh.visual.material import PBRMaterial
 
-from app.clearance_scale import linear_light, rgb
+from app.colours import linear_light, rgb
 from app.files.atomic import write_atomically
 from app.files.provenance import Provenance
 from geometry.assess import Pose

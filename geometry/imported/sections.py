@@ -15,7 +15,7 @@ Array = NDArray[np.float64]
 Indices = NDArray[np.int64]
 
 _LEVELS: Final = 700
-_FINEST_MM: Final = 0.5
+_FINEST_MM: Final = 1.0
 
 
 def section_levels(surfaces: Sequence[Surface]) -> list[Level]:
