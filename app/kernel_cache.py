@@ -1,6 +1,8 @@
 """Where compiled kernels are kept from one start to the next."""
 
 import atexit
+import hashlib
+import importlib.metadata
 import os
 import shutil
 import tempfile
@@ -23,12 +25,22 @@ def choose_kernel_cache() -> None:
     """
     if os.environ.get(_VARIABLE):
         return
-    beside_source = Path(geometry.__file__).parent / "__pycache__"
-    of_user = platformdirs.user_cache_path("wideberth", appauthor=False) / "kernels"
-    folder = first_writable([beside_source, of_user])
-    if folder == beside_source:
-        return  # numba's own first choice
-    os.environ[_VARIABLE] = str(folder or _of_process())
+    name = f"kernels-{kernels_digest()}"
+    beside_source = Path(geometry.__file__).parent / "__pycache__" / name
+    of_user = platformdirs.user_cache_path("wideberth", appauthor=False) / name
+    os.environ[_VARIABLE] = str(first_writable([beside_source, of_user]) or _of_process())
+
+
+def kernels_digest() -> str:
+    """Return a digest of all that compiled kernels are made from.
+
+    Numba notices a change in a kernel's own file alone. A kernel calls those of other files, and after an update would
+    go on with the machine code of the older ones; a folder of its own for each state of the sources prevents that.
+    """
+    digest = hashlib.sha256(importlib.metadata.version("numba").encode())
+    for source in sorted(Path(geometry.__file__).parent.glob("*kernel*.py")):
+        digest.update(source.read_bytes())
+    return digest.hexdigest()[:16]
 
 
 def first_writable(folders: Sequence[Path]) -> Path | None:

@@ -98,7 +98,7 @@ class _Maker:
         self.arm_radius = self.size["biceps_circumference_mm"] / (2.0 * math.pi)
         self.thigh_radius = 0.255 * self.size["hip_breadth_mm"]
         self.deepest = max(self.size["chest_depth_mm"], self.size["waist_depth_mm"], self.hip_depth)
-        # Trunk, head and arms turn about the line where the hips touch the plane that they lie on.
+        # Trunk, head and raised arms turn about the line where the hips touch the plane that they lie on.
         pivot = np.array([0.0, 0.0, self.down(_HIP)])
         turn = rotation_x(body.slope_deg)
         self.T_raised = transform(turn, pivot - turn @ pivot)
@@ -115,10 +115,10 @@ class _Maker:
         raised = {
             "head and neck": self.head(),
             "trunk": Loft(self.trunk_sections(), "z"),
-            "left arm": self.arm(1.0, self.body.arm_left),
-            "right arm": self.arm(-1.0, self.body.arm_right),
         }
         flat = {
+            "left arm": self.arm(1.0, self.body.arm_left),
+            "right arm": self.arm(-1.0, self.body.arm_right),
             "pelvis": Loft(self.pelvis_sections(), "z"),
             "left leg": self.leg(1.0),
             "right leg": self.leg(-1.0),
@@ -211,6 +211,8 @@ class _Maker:
         shoulder = np.array([side * shoulder_x, shoulder_y, self.down(_SHOULDER) - 0.6 * r])
         lying = self.middle(1.15 * r)
         if posture == "at the side":
+            # From a raised shoulder the arm comes down to the table.
+            shoulder = moved(self.T_raised, shoulder)
             elbow_x = 0.5 * self.size["forearm_forearm_breadth_mm"] - 0.85 * r
             elbow = _at_distance(shoulder, np.array([side * elbow_x, lying, shoulder[2] - upper]), upper)
             wrist = _at_distance(elbow, elbow + np.array([-0.12 * side, 0.0, -1.0]), 0.58 * reach)
@@ -218,13 +220,19 @@ class _Maker:
             half = 0.5 * max(self.size["chest_breadth_mm"], self.size["waist_breadth_mm"])
             elbow = _at_distance(shoulder, np.array([side * (half + r), shoulder_y, shoulder[2] - upper]), upper)
             front = shoulder_y - 0.5 * max(self.size["chest_depth_mm"], self.size["waist_depth_mm"])
-            over = np.array([0.0, front - 0.8 * r - (0.9 * r if side > 0.0 else 0.0), self.down(_CHEST)])
-            wrist = _at_distance(elbow, over, 0.58 * reach)
+            # The left forearm crosses over the right one.
+            lift = front - 0.5 * r - (0.9 * r if side > 0.0 else 0.0) - elbow[1]
+            towards_head = math.sqrt(max((0.58 * reach) ** 2 - elbow[0] ** 2 - lift**2, 0.0))
+            wrist = _at_distance(elbow, elbow + np.array([-elbow[0], lift, towards_head]), 0.58 * reach)
         else:
             elbow = _at_distance(shoulder, shoulder + np.array([0.62 * side, 0.0, 0.78]), upper)
             elbow[1] = lying
             wrist = _at_distance(elbow, np.array([0.15 * side * upper, lying, elbow[2] + 0.5 * reach]), 0.58 * reach)
-        hand = _at_distance(wrist, wrist + (wrist - elbow), 0.36 * reach)
+        # A hand on the chest lies flat on it; any other goes on as the forearm does.
+        flat = np.array([1.0, 0.0 if posture == "on the chest" else 1.0, 1.0])
+        hand = _at_distance(wrist, wrist + flat * (wrist - elbow), 0.36 * reach)
+        if posture != "at the side":
+            shoulder, elbow, wrist, hand = (moved(self.T_raised, joint) for joint in (shoulder, elbow, wrist, hand))
         return Group(
             (
                 _limb(shoulder, elbow, r * 1.05, r * 0.85),

@@ -6,6 +6,7 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
+from geometry.errors import GeometryError
 from geometry.kernel import WINDS, Hulls
 from geometry.pieces import ConvexPiece
 
@@ -16,8 +17,10 @@ def packed_hulls(pieces: Sequence[ConvexPiece], parts: Sequence[int], axis: int 
     """Pack convex pieces of one body, in the body's system.
 
     `parts` gives each piece's part number. `axis` is the coordinate axis about which the body turns (1 for the
-    gantry's Y, 2 for the couch's Z), None for a body that stands still.
+    gantry's Y, 2 for the couch's Z), None for a body that stands still. GeometryError for what is not a number.
     """
+    if not all(np.isfinite(piece.vertices).all() for piece in pieces):
+        raise GeometryError("a piece has a vertex that is not a number; allowed: finite coordinates")
     first = np.cumsum([0, *(len(piece.vertices) for piece in pieces)])
     edge_counts = np.concatenate([np.zeros(1, np.int64), *(piece.neighbour_counts for piece in pieces)])
     neighbours = [piece.neighbours + start for piece, start in zip(pieces, first[:-1], strict=True)]

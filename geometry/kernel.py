@@ -103,15 +103,15 @@ class Memory(NamedTuple):
 def wind(x, y, z):
     """Return the place in a compass of a direction: the side of the cube that it meets, and the square on that side."""
     ax, ay, az = abs(x), abs(y), abs(z)
+    if not 0.0 < ax + ay + az < np.inf:
+        # No direction at all: a vertex that is not a number must not lead outside the compass.
+        return 0
     if ax >= ay and ax >= az:
         side, u, v, w = (0 if x > 0.0 else 1), y, z, ax
     elif ay >= az:
         side, u, v, w = (2 if y > 0.0 else 3), z, x, ay
     else:
         side, u, v, w = (4 if z > 0.0 else 5), x, y, az
-    if not 0.0 < w < np.inf:
-        # No direction at all: a vertex that is not a number must not lead outside the compass.
-        return 0
     scale = 0.5 * WINDS / w
     column = min(int(u * scale + 0.5 * WINDS), WINDS - 1)
     row = min(int(v * scale + 0.5 * WINDS), WINDS - 1)
@@ -393,6 +393,7 @@ def distance(a, i, b, j, turn, memory, pair, limit, half_a, half_b):
         s[k, 2] = a.vertices[p, 2] - (r6 * x + r7 * y + r8 * z)
     lower = 0.0
     upper = np.inf
+    length = np.inf
     nx, ny, nz = 0.0, 0.0, 0.0
     for _ in range(STEPS):
         size = _shrink(size, s, corners, weights)
@@ -434,9 +435,10 @@ def distance(a, i, b, j, turn, memory, pair, limit, half_a, half_b):
             nx = vx / length
             ny = vy / length
             nz = vz / length
-        if upper - lower <= RESOLUTION_MM:
+        # Of `length`, not of an earlier and shorter one, are the weights that the witness is made of.
+        if length - lower <= RESOLUTION_MM:
             _set_rates(a, i, b, j, turn, memory, pair, nx, ny, nz)
-            return lower, upper, APART
+            return lower, length, APART
         if lower > limit:
             _set_rates(a, i, b, j, turn, memory, pair, nx, ny, nz)
             falls = fall(a.reach[i], b.reach[j], memory.rate_a[pair], memory.rate_b[pair], half_a, half_b)
@@ -452,7 +454,9 @@ def distance(a, i, b, j, turn, memory, pair, limit, half_a, half_b):
         s[size, 1] = wy
         s[size, 2] = wz
         size += 1
-    memory.size[pair] = 0
     _set_rates(a, i, b, j, turn, memory, pair, nx, ny, nz)
     # Bodies that nearly touch leave little of a direction to rounding; what is certified still tells the distance.
-    return lower, upper, APART if upper - lower <= STALLED_MM else FAILED
+    if length - lower <= STALLED_MM:
+        return lower, length, APART
+    memory.size[pair] = 0
+    return lower, upper, FAILED

@@ -168,7 +168,7 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
         falls = fall(a.reach[i], b.reach[j], rate_a, rate_b, half_a, half_b)
         least = max(low - falls, brought)
         # An overlap deeper than the motion lasts through the whole cell.
-        most = max(min(high + motion, _rise(high, falls, motion)), 0.0)
+        most = max(min(high + motion, _rise(low, high, falls, motion)), 0.0)
         if most < near:
             near = most
             nearest = kept
@@ -210,7 +210,9 @@ def _drop_settled(pairs, lists, depth, asked, near, tight, nearest, tightest):
         p = lists.pair[depth, k]
         least = lists.here[k]
         # The first is the leader.
-        if k in (0, nearest, tightest) or least < near or least - pairs.required[p] < tight:
+        # Asked so that what is not a number stays.
+        settled = least >= near and least - pairs.required[p] >= tight
+        if not settled or k in (0, nearest, tightest):
             _keep(
                 lists,
                 depth,
@@ -232,11 +234,15 @@ def _drop_settled(pairs, lists, depth, asked, near, tight, nearest, tightest):
 
 
 @inlined
-def _rise(high, falls, motion):
-    """Return an upper bound of a distance, now `high` along a normal, after a motion of which `falls` is along it."""
+def _rise(low, high, falls, motion):
+    """Return an upper bound of a distance in [low, high] after a motion of which at most `falls` is along the normal.
+
+    `high` is the length of a vector whose part along the normal is `low` at least; the rest may stand across it.
+    """
     if high <= 0.0:
         return np.inf
-    return np.sqrt((high + falls) ** 2 + motion * motion)
+    across = np.sqrt(max(high * high - low * low, 0.0)) + motion
+    return np.sqrt((high + falls) ** 2 + across * across)
 
 
 @pasted

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from geometry.errors import GeometryError
 from geometry.hulls import packed_hulls
 from geometry.kernel import Hulls
 from geometry.machine import JoinedPair
@@ -84,7 +85,10 @@ def _plane(scene: Scene, motion_a: Motion, members_a: list[int], motion_b: Motio
             checked[one, other] = is_checked(scene.parts[one], scene.parts[other], scene.setup.room.joined)
             required[one, other] = scene.required_mm(scene.parts[one], scene.parts[other])
     i, j = np.nonzero(checked[np.ix_(a.part, b.part)])
-    pairs = Pairs(i.astype(np.int32), j.astype(np.int32), required[a.part[i], b.part[j]])
+    needed = required[a.part[i], b.part[j]]
+    if not (np.isfinite(needed) & (needed > 0.0)).all():
+        raise GeometryError(f"required clearance = {needed.min():g} mm; allowed: above 0 for every pair")
+    pairs = Pairs(i.astype(np.int32), j.astype(np.int32), needed)
     return Plane(a, b, pairs, Motion.GANTRY in (motion_a, motion_b), Motion.TURNTABLE in (motion_a, motion_b))
 
 

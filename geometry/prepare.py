@@ -14,7 +14,7 @@ from geometry.proof import prove_plane, steps_over
 from geometry.sweep import angles_of, sweep_plane
 
 # Compilations of a first start. Only the bar's pace hangs on it.
-COMPILATIONS: Final = 22
+COMPILATIONS: Final = 30
 
 
 class _Counter(event.Listener):

@@ -7,6 +7,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from geometry.errors import GeometryError
 from geometry.kernel import Memory
 from geometry.plane_kernel import Lists
 from geometry.planes import Plane, planes_of
@@ -21,6 +22,9 @@ Interval = tuple[float, float]
 
 # Cells of the first division are at most this wide, deg. Wider ones would have to be halved nearly everywhere.
 FIRST_CELL_DEG = 8.0
+# Finer edges would need more halvings than the kernels keep lists for.
+EDGE_DEG = (0.02, 45.0)
+LARGEST_TOLERANCE_DEG = 45.0
 # First cells each way that are proved one after the other, with what was learnt from one to the next.
 TILE = 4
 # Angles nearer than this to the border of a step count as on it.
@@ -116,8 +120,13 @@ def tolerance_on(travel: Interval, tolerance_deg: float) -> float:
 def steps_over(travel: Interval, tolerance_deg: float, edge_deg: float) -> Steps:
     """Cut a travel, widened by the readout tolerance, into steps at multiples of `edge_deg`.
 
-    Where the tolerance rectangle of a reading passes a travel end, distances are proved there too.
+    Where the tolerance rectangle of a reading passes a travel end, distances are proved there too. GeometryError for an
+    edge or a tolerance out of range.
     """
+    if not EDGE_DEG[0] <= edge_deg <= EDGE_DEG[1]:
+        raise GeometryError(f"edge_deg = {edge_deg:g} is outside the range {EDGE_DEG[0]:g} to {EDGE_DEG[1]:g}")
+    if not 0.0 <= tolerance_deg <= LARGEST_TOLERANCE_DEG:
+        raise GeometryError(f"tolerance_deg = {tolerance_deg:g} is outside the range 0 to {LARGEST_TOLERANCE_DEG:g}")
     low = travel[0] - tolerance_on(travel, tolerance_deg)
     high = travel[1] + tolerance_on(travel, tolerance_deg)
     start = math.floor(low / edge_deg + _ON_BORDER) * edge_deg

@@ -136,12 +136,13 @@ def permitted_region(proof: Proof, tolerances: Tolerances) -> shapely.Geometry:
     padded = np.pad(eroded, ((0, 0), (1, 1))).astype(np.int8)
     rows, starts = np.nonzero(np.diff(padded, axis=1) == 1)
     _, stops = np.nonzero(np.diff(padded, axis=1) == -1)
-    x0 = proof.gantry.start_deg + starts * proof.gantry.step_deg
-    x1 = proof.gantry.start_deg + stops * proof.gantry.step_deg
-    y0 = proof.couch.start_deg + rows * proof.couch.step_deg
-    boxes = shapely.box(x0, y0, x1, y0 + proof.couch.step_deg)
-    region = shapely.union_all(boxes).simplify(0.0)
-    return region.intersection(shapely.box(travel[0], travel[2], travel[1], travel[3]))
+    x0 = np.maximum(proof.gantry.start_deg + starts * proof.gantry.step_deg, travel[0])
+    x1 = np.minimum(proof.gantry.start_deg + stops * proof.gantry.step_deg, travel[1])
+    y0 = np.maximum(proof.couch.start_deg + rows * proof.couch.step_deg, travel[2])
+    y1 = np.minimum(proof.couch.start_deg + (rows + 1) * proof.couch.step_deg, travel[3])
+    # Of a cell in the tolerance band beyond the travel nothing is left.
+    real = (x1 > x0) & (y1 > y0)
+    return shapely.union_all(shapely.box(x0[real], y0[real], x1[real], y1[real])).simplify(0.0)
 
 
 def _covered(steps: Steps, low_deg: float, high_deg: float, run: Run) -> slice:

@@ -46,7 +46,7 @@ CHUNK = 512
 COUCH_READINGS = 60
 
 
-@njit(nogil=True, error_model="numpy")
+@njit(nogil=True, cache=True, error_model="numpy")
 def _ask(a, b, pairs, turns, memory, bound, clearance, slack):  # type: ignore[no-untyped-def]  # noqa: ANN001, ANN202
     """Lower clearance and slack of each pose, `turns` (n, 9) from b's system to a's, to those of this plane."""
     for pose in range(len(turns)):
@@ -229,26 +229,17 @@ def _couch_readings(rng: Generator, proof: Proof, tolerances: Tolerances) -> Arr
 
 
 def _in_region(rng: Generator, region: shapely.Geometry, count: int) -> tuple[Array, None]:
-    if region.is_empty:
+    """Return readings of the region's inside, of its border and, as many as there are, of its corners."""
+    if region.area == 0.0:
         return np.empty((0, 2)), None
-    x0, y0, x1, y1 = region.bounds
-    points = rng.uniform((x0, y0), (x1, y1), (8 * count, 2))
     shapely.prepare(region)
+    x0, y0, x1, y1 = region.bounds
+    points = rng.uniform((x0, y0), (x1, y1), (4 * count, 2))
     inside = points[shapely.contains_xy(region, points)][: count // 2]
-    border = region.boundary
-    on_border = shapely.get_coordinates(shapely.line_interpolate_point(_lines(border, rng, count // 2), _parts(rng, count)))
-    corners = shapely.get_coordinates(border)
-    on_corners = corners[rng.integers(len(corners), size=count // 4)]
-    return np.concatenate([inside, on_border, on_corners]), None
-
-
-def _lines(border: shapely.Geometry, rng: Generator, count: int) -> NDArray[np.object_]:
-    lines = shapely.get_parts(border)
-    return lines[rng.integers(len(lines), size=count)]
-
-
-def _parts(rng: Generator, count: int) -> Array:
-    return rng.uniform(0.0, 400.0, count // 2)
+    corners, ring = shapely.get_coordinates(shapely.get_rings(shapely.get_parts(region)), return_index=True)
+    start = rng.choice(np.flatnonzero(ring[:-1] == ring[1:]), size=count // 2)
+    part = np.maximum(0.0, rng.uniform(-1.0, 1.0, (count // 2, 1)))
+    return np.concatenate([inside, corners[start] + part * (corners[start + 1] - corners[start])]), None
 
 
 def _in_cells(rng: Generator, proof: Proof, count: int) -> tuple[Array, Array | None]:

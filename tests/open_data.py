@@ -45,7 +45,17 @@ def _fetched(scratch: Path) -> Path:
     """Return the archive that pip puts into a folder; its hash is checked before anything of it is looked at."""
     wanted = scratch / "wanted.txt"
     wanted.write_text(f"{_NAME}=={_VERSION} --hash=sha256:{_SHA256}\n", encoding="utf-8")
-    command = [sys.executable, "-m", "pip", "download", "--quiet", "--no-deps", "--no-binary", _NAME, "--require-hashes"]
+    command = [
+        sys.executable,
+        "-m",
+        "pip",
+        "download",
+        "--quiet",
+        "--no-deps",
+        "--no-binary",
+        _NAME,
+        "--require-hashes",
+    ]
     done = subprocess.run(
         [*command, "--dest", str(scratch), "--requirement", str(wanted)],
         capture_output=True,

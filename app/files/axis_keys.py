@@ -64,5 +64,5 @@ def _readout(table: Table, unit: Literal["deg", "mm"]) -> Readout:
     sense = table.whole("sense", -1, 1) if table.has("sense") else 1
     if sense == 0:
         table.fault("sense", "0", "1 or -1")
-    resolution = table.number(f"resolution_{unit}", Limits(0.0, 10.0, above=True), default=0.1)
+    resolution = table.number(f"resolution_{unit}", Limits(1e-4, 10.0), default=0.1)
     return Readout(zero, -1 if sense < 0 else 1, resolution)

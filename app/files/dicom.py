@@ -15,7 +15,7 @@ from typing import TYPE_CHECKING, Final
 import numpy as np
 from numpy.typing import NDArray
 
-from app.files.input_file import bad, checked_file
+from app.files.input_file import bad, checked_file, refused
 from app.files.wording import described, did_you_mean, one_of, printable
 from geometry.errors import BadInput, Fault, GeometryError
 from geometry.frames import PATIENT_POSITIONS
@@ -66,8 +66,7 @@ def read_external_contour(path: Path | str, roi_name: str | None = None) -> Cont
     try:
         return ContourStack(contours)
     except GeometryError as error:
-        found, _, allowed = str(error).partition("; allowed: ")
-        raise bad(path, structure, found, allowed) from error
+        raise refused(path, structure, error) from error
 
 
 def structure_patient_position(path: Path | str) -> str | None:

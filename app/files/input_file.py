@@ -1,8 +1,12 @@
 """Checks that any file has to pass before a library is trusted with it."""
 
+import re
 from pathlib import Path
+from typing import Final
 
-from geometry.errors import BadInput, Fault
+from geometry.errors import BadInput, Fault, GeometryError
+
+_ALLOWED: Final = re.compile(r"; allowed(?: is| are|:) ")
 
 
 def checked_file(path: Path | str, largest_bytes: int) -> Path:
@@ -26,3 +30,9 @@ def checked_file(path: Path | str, largest_bytes: int) -> Path:
 def bad(path: Path | str, place: str, found: str, allowed: str) -> BadInput:
     """Return the error for one fault of a file."""
     return BadInput([Fault(str(path), place, found, allowed)])
+
+
+def refused(path: Path | str, place: str, error: GeometryError) -> BadInput:
+    """Return the error for a file whose solid cannot be built."""
+    found, allowed = [*_ALLOWED.split(str(error), maxsplit=1), "what the message says"][:2]
+    return bad(path, place, found, allowed)

@@ -6,10 +6,11 @@ from typing import TYPE_CHECKING, Final, Literal, get_args
 
 import numpy as np
 
-from app.files.input_file import bad, checked_file
+from app.files.input_file import bad, checked_file, refused
 from app.files.wording import described, one_of
 from geometry.errors import BadInput, GeometryError
 from geometry.imported import MOST_TRIANGLES, ClosedMesh
+from geometry.outlines import LARGEST_MM
 
 if TYPE_CHECKING:
     from trimesh import Trimesh
@@ -42,8 +43,7 @@ def read_mesh(path: Path | str, unit: Unit) -> ClosedMesh:
     try:
         return _closed(mesh, _UNIT_MM[unit])
     except GeometryError as error:
-        found, _, allowed = str(error).partition("; allowed: ")
-        raise bad(path, "surface", found, allowed) from error
+        raise refused(path, "surface", error) from error
 
 
 def _loaded(file: Path, kind: str) -> "Trimesh":
@@ -74,7 +74,7 @@ def _closed(mesh: "Trimesh", unit_mm: float) -> ClosedMesh:
 
     vertices = np.asarray(mesh.vertices, dtype=np.float64) * unit_mm
     faces = np.asarray(mesh.faces, dtype=np.int64)
-    if not np.isfinite(vertices).all():
+    if not np.all(np.abs(vertices) <= LARGEST_MM):
         # Refused with its place; what follows could not cope with it.
         return ClosedMesh(vertices, faces)
     bare = trimesh.Trimesh(vertices, faces, process=False)

@@ -129,15 +129,17 @@ def connected_cells(prisms: Sequence[Prism]) -> list[ContourCell]:
     return cells
 
 
-def enclosing_outline(outline: shapely.Geometry, tolerance_mm: float) -> shapely.Geometry:
-    """Return an outline of fewer points that contains `outline` and stands out at most about twice the tolerance.
+def simpler_outline(outline: shapely.Geometry, tolerance_mm: float, *, within: bool) -> shapely.Geometry:
+    """Return an outline of fewer points that contains `outline`, or is within it, and differs by about twice as much.
 
-    Grown by the tolerance, it may be smoothed by as much and still contains what it was. Rounding is not trusted:
-    where it does not, or saves few points, the outline itself is returned.
+    Grown by the tolerance, it may be smoothed by as much and still contains what it was; shrunk, it stays within.
+    Rounding is not trusted: where this fails, or saves few points, the outline itself is returned.
     """
-    smoothed = outline.buffer(1.1 * tolerance_mm, quad_segs=_QUARTER).simplify(tolerance_mm)
-    saves = shapely.get_num_coordinates(smoothed) < 0.8 * shapely.get_num_coordinates(outline)
-    return smoothed if saves and smoothed.covers(outline) else outline
+    distance_mm = 1.1 * tolerance_mm * (-1.0 if within else 1.0)
+    simpler = outline.buffer(distance_mm, quad_segs=_QUARTER).simplify(tolerance_mm)
+    saves = shapely.get_num_coordinates(simpler) < 0.8 * shapely.get_num_coordinates(outline)
+    holds = outline.covers(simpler) if within else simpler.covers(outline)
+    return simpler if saves and holds else outline
 
 
 def parts_of(geometry: object) -> NDArray[np.object_]:

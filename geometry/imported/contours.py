@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from geometry.decompose import Faceted
 from geometry.errors import GeometryError
-from geometry.imported.contour_cells import Prism, connected_cells, enclosing_outline, parts_of
+from geometry.imported.contour_cells import Prism, connected_cells, parts_of, simpler_outline
 from geometry.imported.levels import Level
 from geometry.imported.subdivision import enclosing_pieces
 from geometry.outlines import LARGEST_MM, checked_excess, number
@@ -22,13 +22,14 @@ Flags = NDArray[np.bool_]
 
 MOST_CONTOURS: Final = 2_000
 MOST_POINTS: Final = 500_000
+MOST_POINTS_OF_A_SLICE: Final = 20_000
 MOST_PIECES: Final = 2_000
 # Outlines whose heights differ by no more than this are on one slice.
 SAME_SLICE_MM: Final = 0.01
 # What has less area than this is widened, so that nothing that an outline says is lost.
 _SMALLEST_AREA_MM2: Final = 1e-3
 _WIDENED_MM: Final = 0.1
-# How far outlines are smoothed outwards before they are cut: what follows takes time with every point.
+# How far outlines are smoothed before they are cut and measured: what follows takes time with every point.
 _SMOOTHED_MM: Final = 0.25
 
 
@@ -43,7 +44,8 @@ class ContourStack:
     the next.
 
     The pieces contain all straight lines between neighbouring outlines, too (`contour_cells`). Cutting into pieces
-    ends where none stands out more than `wanted_excess_mm`, or at `most_pieces`.
+    ends where none stands out more than `wanted_excess_mm`, or at `most_pieces`; outlines that nothing joins are
+    pieces of their own, however many they are.
     """
 
     contours: tuple[tuple[float, Array], ...] = field(repr=False)
@@ -63,17 +65,23 @@ class ContourStack:
         slices = _by_height(contours)
         if len(slices) < 2:
             raise GeometryError(f"contours on {len(slices)} slices; allowed: 2 or more, at different z")
+        fullest = max(sum(map(len, outlines)) for _, outlines in slices)
+        if fullest > MOST_POINTS_OF_A_SLICE:
+            raise GeometryError(f"{fullest} points on one slice; allowed: at most {MOST_POINTS_OF_A_SLICE}")
 
     def faceted(self, max_excess_mm: float) -> Faceted:
         """Return convex pieces that contain the solid, and their excess over it, measured from above.
 
-        What it comes to depends on the solid's folds: `wanted_excess_mm` and `max_excess_mm` say how much of it may be
-        due to fewer vertices, a quarter of the one or all of the other.
+        How far they stand out depends on the solid's folds: it is stated, not kept. Pieces have fewer vertices than
+        the hulls of what they hold, at the cost of `max_excess_mm` or a quarter of `wanted_excess_mm`, the greater.
         """
         tolerance_mm = max(checked_excess(max_excess_mm), self.wanted_excess_mm / 4.0)
-        levels = [Level(prism.low_mm, prism.high_mm, ((prism.outline, 0.0),)) for prism in self._prisms]
-        enclosing = [enclosing_outline(outline, _SMOOTHED_MM) for _, outline in self._slices]
-        cells = connected_cells(_stacked(self._slices, enclosing))
+        inner, outer = (
+            [simpler_outline(outline, _SMOOTHED_MM, within=within) for _, outline in self._slices]
+            for within in (True, False)
+        )
+        levels = [Level(one.low_mm, one.high_mm, ((one.outline, 0.0),)) for one in _stacked(self._slices, inner)]
+        cells = connected_cells(_stacked(self._slices, outer))
         return enclosing_pieces(cells, levels, self.wanted_excess_mm, self.most_pieces, tolerance_mm)
 
     def contains(self, points: Array) -> Flags:

@@ -11,6 +11,7 @@ Indices = NDArray[np.int64]
 
 # Half of the thickness, mm, that flat points are given so that they span a volume.
 _FLAT_MM: Final = 1e-3
+_NO_VOLUME_MM3: Final = 1e-6
 # Planes of a simpler hull stand off by this, mm, so that rounding in their corners cannot bring them inside.
 _ROUNDING_MM: Final = 1e-6
 _FEW_VERTICES: Final = 24
@@ -44,6 +45,8 @@ def hull_of(points: Array) -> Hull:
     try:
         hull = ConvexHull(points)
     except (QhullError, ValueError):
+        hull = None
+    if hull is None or hull.volume < _NO_VOLUME_MM3:
         points = _thickened(points)
         hull = ConvexHull(points)
     renumbered = np.full(len(points), -1)

@@ -54,10 +54,10 @@ class ClosedMesh:
             raise GeometryError(f"volume = {volume_mm3:g} mm³; allowed: {SMALLEST_VOLUME_MM3:g} mm³ or more")
 
     def faceted(self, max_excess_mm: float) -> Faceted:
-        """Return convex pieces that contain the solid, and their excess, measured from above.
+        """Return convex pieces that contain the solid, and their excess over it, measured from above.
 
-        What it comes to depends on the solid's folds: `wanted_excess_mm` and `max_excess_mm` say how much of it may be
-        due to fewer vertices, a quarter of the one or all of the other.
+        How far they stand out depends on the solid's folds: it is stated, not kept. Pieces have fewer vertices than
+        the hulls of what they hold, at the cost of `max_excess_mm` or a quarter of `wanted_excess_mm`, the greater.
         """
         tolerance_mm = max(checked_excess(max_excess_mm), self.wanted_excess_mm / 4.0)
         pieces: list[Array] = []

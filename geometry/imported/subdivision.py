@@ -82,16 +82,21 @@ def subdivided(roots: Sequence[Cell], levels: Sequence[Level], wanted_mm: float,
         put(root, math.inf, 0)
     while heap and heap[0][2].found.excess_mm > wanted_mm:
         _, _, worst = heapq.heappop(heap)
-        room = most - len(heap) - len(finished)
-        ways = worst.cell.cuts(worst.found.where) if worst.vain < _CUTS_IN_VAIN else []
-        left = [round(sum(part.hull.volume_mm3 for part in parts) / worst.cell.hull.volume_mm3, 2) for parts in ways]
-        best = ways[int(np.argmin(left))] if ways else [worst.cell] * (room + 1)
-        if len(best) > room:
+        parts = _best_cut(worst) if worst.vain < _CUTS_IN_VAIN else None
+        if parts is None or len(heap) + len(finished) + len(parts) > most:
             finished.append(worst.cell)
         else:
-            for part in best:
+            for part in parts:
                 put(part, worst.found.excess_mm, worst.vain)
-    return finished + [cell.cell for _, _, cell in heap]
+    return finished + [remaining.cell for _, _, remaining in heap]
+
+
+def _best_cut(worst: _Open) -> list[Cell] | None:
+    """Return the cells that leave the least volume, to a hundredth, of all ways to cut a cell; None without a way."""
+    ways = worst.cell.cuts(worst.found.where)
+    volume_mm3 = worst.cell.hull.volume_mm3
+    left = [round(sum(part.hull.volume_mm3 for part in parts) / volume_mm3, 2) for parts in ways]
+    return ways[left.index(min(left))] if ways else None
 
 
 def enclosing_pieces(

@@ -7,7 +7,8 @@ import numpy as np
 import pytest
 from numpy.typing import NDArray
 
-from app.clearance_scale import BANDS, EDGE_COLOURS, EDGES_MM, band_of, linear_light, places, relative_luminance, rgb
+from app.clearance_scale import BANDS, EDGE_COLOURS, EDGES_MM, band_of, places
+from app.colours import linear_light, relative_luminance, rgb
 
 Array = NDArray[np.float64]
 

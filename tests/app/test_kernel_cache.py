@@ -7,7 +7,7 @@ import platformdirs
 import pytest
 
 import geometry
-from app.kernel_cache import choose_kernel_cache, first_writable
+from app.kernel_cache import choose_kernel_cache, first_writable, kernels_digest
 
 VARIABLE = "NUMBA_CACHE_DIR"
 
@@ -21,16 +21,25 @@ def source(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     return tmp_path / "source"
 
 
-def test_numba_keeps_its_own_first_choice_where_it_can_write_it(source: Path) -> None:
+def test_the_first_choice_lies_beside_the_source(source: Path) -> None:
     source.mkdir()
     choose_kernel_cache()
-    assert os.environ[VARIABLE] == ""
+    assert Path(os.environ[VARIABLE]).parent == source / "__pycache__"
+
+
+def test_a_change_in_any_kernel_leads_to_another_folder(source: Path) -> None:
+    source.mkdir()
+    chosen = []
+    for content in ("K = 1", "K = 2", "K = 1"):
+        (source / "kernel.py").write_text(content, encoding="utf-8")
+        chosen.append(kernels_digest())
+    assert chosen[0] == chosen[2] != chosen[1]
 
 
 def test_the_users_folder_is_next(source: Path, tmp_path: Path) -> None:
     source.write_bytes(b"")  # a file: no folder can be made in it, not even by root
     choose_kernel_cache()
-    assert os.environ[VARIABLE] == str(tmp_path / "user" / "wideberth" / "kernels")
+    assert Path(os.environ[VARIABLE]).parent == tmp_path / "user" / "wideberth"
 
 
 def test_a_choice_made_outside_stands(source: Path, monkeypatch: pytest.MonkeyPatch) -> None:

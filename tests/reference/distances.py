@@ -5,8 +5,7 @@ too, since `fcl.Box` against `fcl.Box` is wrong when turned.
 """
 
 from dataclasses import dataclass
-from functools import cached_property
-from typing import Any, Protocol
+from typing import Any, Protocol, get_args
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,7 +13,7 @@ from scipy.spatial import ConvexHull
 from scipy.spatial.transform import Rotation
 
 from geometry.setup import Setup
-from tests.reference.poses import Standing, asked, required_mm, standing_parts
+from tests.reference.poses import Carrier, asked, required_mm, standing_parts, turns
 
 try:
     import coal
@@ -29,12 +28,15 @@ TOLERANCE_MM = 1e-6
 
 
 class Library(Protocol):
-    """What is asked of a distance library."""
+    """What is asked of a distance library; the `Any`s are its own objects."""
 
-    def hull(self, points: Array) -> Any:  # noqa: ANN401 - the libraries' own objects
+    def hull(self, points: Array) -> Any:  # noqa: ANN401
         """Return the convex hull of points, (n, 3), mm."""
 
-    def distance_mm(self, first: Any, second: Any, turn_first: Rotation, turn_second: Rotation) -> float:  # noqa: ANN401
+    def turned(self, turn: Rotation) -> Any:  # noqa: ANN401
+        """Return the library's form of a turn about the origin."""
+
+    def distance_mm(self, first: Any, second: Any, turn_first: Any, turn_second: Any) -> float:  # noqa: ANN401
         """Return the distance of two hulls, each turned about the origin; 0 or less in contact."""
 
 
@@ -52,10 +54,13 @@ class Coal:
             vertices.append(point)
         return coal.Convex.convexHull(vertices, False, "")
 
-    def distance_mm(self, first: Any, second: Any, turn_first: Rotation, turn_second: Rotation) -> float:  # noqa: ANN401
+    def turned(self, turn: Rotation) -> Any:  # noqa: ANN401
+        """Return coal's transform."""
+        return coal.Transform3s(turn.as_matrix(), np.zeros(3))
+
+    def distance_mm(self, first: Any, second: Any, turn_first: Any, turn_second: Any) -> float:  # noqa: ANN401
         """Return coal's signed distance."""
-        poses = [coal.Transform3s(turn.as_matrix(), np.zeros(3)) for turn in (turn_first, turn_second)]
-        return float(coal.distance(first, poses[0], second, poses[1], self.request, coal.DistanceResult()))
+        return float(coal.distance(first, turn_first, second, turn_second, self.request, coal.DistanceResult()))
 
 
 class Fcl:
@@ -74,14 +79,17 @@ class Fcl:
         listed = np.column_stack([np.full(len(faces), 3), faces]).astype(np.int32)
         return fcl.Convex(points, len(faces), listed.ravel())
 
-    def distance_mm(self, first: Any, second: Any, turn_first: Rotation, turn_second: Rotation) -> float:  # noqa: ANN401
+    def turned(self, turn: Rotation) -> Any:  # noqa: ANN401
+        """Return fcl's transform."""
+        import fcl
+
+        return fcl.Transform(turn.as_matrix(), np.zeros(3))
+
+    def distance_mm(self, first: Any, second: Any, turn_first: Any, turn_second: Any) -> float:  # noqa: ANN401
         """Return fcl's distance, 0 or less in contact."""
         import fcl
 
-        placed = [
-            fcl.CollisionObject(solid, fcl.Transform(turn.as_matrix(), np.zeros(3)))
-            for solid, turn in ((first, turn_first), (second, turn_second))
-        ]
+        placed = fcl.CollisionObject(first, turn_first), fcl.CollisionObject(second, turn_second)
         return float(fcl.distance(*placed, fcl.DistanceRequest(), fcl.DistanceResult()))
 
 
@@ -93,7 +101,7 @@ def library() -> Library:
 def hull_distance_mm(first: Array, second: Array, by: Library | None = None) -> float:
     """Return the distance of the hulls of two point sets, (n, 3), mm; 0 in contact."""
     by = by or library()
-    still = Rotation.identity()
+    still = by.turned(Rotation.identity())
     distance = by.distance_mm(by.hull(first), by.hull(second), still, still)
     return distance if distance > CONTACT_MM else 0.0
 
@@ -116,44 +124,57 @@ class LeastDistances:
     def __init__(self, setup: Setup, by: Library | None = None) -> None:
         self.by = by or library()
         self.parts = standing_parts(setup)
-        self.setup = setup
-
-    @cached_property
-    def _pieces(self) -> list[tuple[Standing, Array, Any]]:
-        return [(part, piece, self.by.hull(piece)) for part in self.parts for piece in part.pieces]
-
-    @cached_property
-    def _pairs(self) -> tuple[NDArray[np.int64], NDArray[np.int64], Array]:
-        """The pieces of each pair that is asked, and what is required of it, mm."""
-        found = [
-            (i, j, required_mm(one, other, self.setup))
-            for i, (one, _, _) in enumerate(self._pieces)
-            for j, (other, _, _) in enumerate(self._pieces[:i])
-            if asked(one, other, self.setup)
-        ]
-        first, second, required = zip(*found, strict=True) if found else ((), (), ())
-        return np.array(first, np.int64), np.array(second, np.int64), np.array(required)
+        self.part_of = [part for part in self.parts for _ in part.pieces]
+        pieces = [piece for part in self.parts for piece in part.pieces]
+        self.first = np.cumsum([0, *(len(piece) for piece in pieces)])[:-1]
+        self.points = np.vstack(pieces)
+        self.hulls = [self.by.hull(piece) for piece in pieces]
+        carriers = [(part.carrier, len(piece)) for part in self.parts for piece in part.pieces]
+        self.carried = {
+            carrier: np.concatenate([np.full(count, one == carrier) for one, count in carriers])
+            for carrier in get_args(Carrier)
+        }
+        self.pairs = self._pairs(setup)
 
     def at(self, gantry_deg: float, couch_deg: float) -> Found:
         """Return clearance and slack at a pair of angles; infinite where no pair is asked."""
-        turns = {part: part.turn(gantry_deg, couch_deg) for part in self.parts}
-        placed = [turns[part].apply(piece) for part, piece, _ in self._pieces]
-        low = np.array([piece.min(axis=0) for piece in placed])
-        high = np.array([piece.max(axis=0) for piece in placed])
-        i, j, required = self._pairs
+        turned = turns(gantry_deg, couch_deg)
+        points = np.empty_like(self.points)
+        for carrier, rows in self.carried.items():
+            points[rows] = self.points[rows] @ turned[carrier].as_matrix().T
+        low, high = np.minimum.reduceat(points, self.first), np.maximum.reduceat(points, self.first)
+        i, j, required = self.pairs
         between_boxes = np.linalg.norm(np.maximum(0.0, np.maximum(low[i] - high[j], low[j] - high[i])), axis=1)
+        poses = {carrier: self.by.turned(turn) for carrier, turn in turned.items()}
         clearance, slack, nearest = np.inf, np.inf, None
         for k in np.argsort(between_boxes):
-            if between_boxes[k] >= clearance and between_boxes[k] - required[k] >= slack:
+            apart, asked_mm = float(between_boxes[k]), float(required[k])
+            if apart >= clearance and apart - asked_mm >= slack:
                 # Later pairs have boxes as far apart, but may require more.
-                if between_boxes[k] - required.max() >= slack:
+                if apart - required.max() >= slack:
                     break
                 continue
-            one, _, solid_one = self._pieces[i[k]]
-            other, _, solid_other = self._pieces[j[k]]
-            distance = self.by.distance_mm(solid_one, solid_other, turns[one], turns[other])
+            one, other = self.part_of[i[k]], self.part_of[j[k]]
+            distance = self.by.distance_mm(self.hulls[i[k]], self.hulls[j[k]], poses[one.carrier], poses[other.carrier])
             distance = distance if distance > CONTACT_MM else 0.0
-            slack = min(slack, distance - required[k])
+            slack = min(slack, distance - asked_mm)
             if distance < clearance:
                 clearance, nearest = distance, (one.label, other.label)
         return Found(clearance, slack, nearest)
+
+    def _pairs(self, setup: Setup) -> tuple[NDArray[np.int64], NDArray[np.int64], Array]:
+        """Return the pieces of each pair that is asked, and what is required of it, mm."""
+        among = {
+            (one, other): required_mm(one, other, setup)
+            for one in self.parts
+            for other in self.parts
+            if asked(one, other, setup)
+        }
+        found = [
+            (i, j, among[one, other])
+            for i, one in enumerate(self.part_of)
+            for j, other in enumerate(self.part_of[:i])
+            if (one, other) in among
+        ]
+        first, second, required = zip(*found, strict=True) if found else ((), (), ())
+        return np.array(first, np.int64), np.array(second, np.int64), np.array(required)

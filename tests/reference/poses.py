@@ -6,6 +6,7 @@ Shares the lists of parts and their facets with the program, none of its matrice
 
 import math
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Literal
 
 import numpy as np
@@ -20,6 +21,7 @@ from geometry.solids import Solid
 
 Array = NDArray[np.float64]
 SideName = Literal["gantry", "couch", "room"]
+Carrier = Literal["gantry", "couch", "nothing"]
 
 # DICOM patient (x, y, z) in terms of table-top axes: arXiv:1406.0014, table 1, as printed there.
 PATIENT_AXES = {
@@ -41,7 +43,7 @@ class Standing:
     name: str
     side: SideName
     kind: str
-    turns_with: Literal["gantry", "couch", "nothing"]
+    carrier: Carrier
     pieces: tuple[Array, ...]
 
     @property
@@ -49,52 +51,80 @@ class Standing:
         """The name that exports use."""
         return f"{self.side}/{self.name}"
 
-    def turn(self, gantry_deg: float, couch_deg: float) -> Rotation:
-        """Return how a pair of angles turns the part away from where it stands."""
-        if self.turns_with == "gantry":
-            return Rotation.from_euler("Y", gantry_deg, degrees=True)
-        if self.turns_with == "couch":
-            return Rotation.from_euler("Z", couch_deg, degrees=True)
-        return Rotation.identity()
-
     def at(self, gantry_deg: float, couch_deg: float) -> list[Array]:
         """Return the pieces at a pair of angles, fixed system."""
-        turn = self.turn(gantry_deg, couch_deg)
+        turn = turns(gantry_deg, couch_deg)[self.carrier]
         return [turn.apply(piece) for piece in self.pieces]
+
+
+def turns(gantry_deg: float, couch_deg: float) -> dict[Carrier, Rotation]:
+    """Return how a pair of angles turns what is carried away from where it stands (IEC 61217: about Y, about Z)."""
+    return {
+        "gantry": Rotation.from_euler("Y", gantry_deg, degrees=True),
+        "couch": Rotation.from_euler("Z", couch_deg, degrees=True),
+        "nothing": Rotation.identity(),
+    }
+
+
+@dataclass(frozen=True, eq=False)
+class Placement:
+    """Where a set-up puts table top and patient: the turns and shifts of `standing_parts`, mm.
+
+    `table` is T, where the stages hold the table-top origin so that the isocentre, `isocentre` on the table, stays put:
+    r_f = Rz(couch) [E + Rz(eccentric) (T + Rx(pitch) Ry(roll) p)] = 0.
+    """
+
+    to_table: Array
+    lying: Array
+    isocentre: Array
+    eccentric: Rotation
+    tilt: Rotation
+    table: Array
+
+    def patient_on_table(self, points_dicom: Array) -> Array:
+        """Return points, (..., 3), of the patient in table-top coordinates."""
+        on_table: Array = points_dicom @ self.to_table.T + self.lying
+        return on_table
+
+
+def placement_of(setup: Setup) -> Placement:
+    """Return where a set-up puts table top and patient."""
+    to_table = axes_of(setup.patient_position).T
+    facets = [piece for _, solid in patient_solids(setup.patient) for piece in _facets(solid, setup)]
+    points = np.vstack(facets) @ to_table.T
+    where, couch = setup.on_table, setup.room.couch
+    lying = np.array(
+        [
+            where.lateral_mm,
+            couch.head_end_mm - where.from_head_end_mm - points[:, 1].max(),
+            where.height_mm - points[:, 2].min(),
+        ]
+    )
+    isocentre = _isocentre_dicom(setup) @ to_table.T + lying
+    eccentric = Rotation.from_euler("Z", setup.eccentric_deg, degrees=True)
+    tilt = Rotation.from_euler("XY", [setup.pitch_deg, setup.roll_deg], degrees=True)
+    table = eccentric.inv().apply(-np.array(couch.eccentric_offset_mm)) - tilt.apply(isocentre)
+    return Placement(to_table, lying, isocentre, eccentric, tilt, table)
 
 
 def standing_parts(setup: Setup) -> tuple[Standing, ...]:
     """Return every part of a set-up, in the order machine, patient, devices."""
     room = setup.room
+    placement = placement_of(setup)
     parts = [
-        _machine_part(part, setup) for part in room.parts if part.accessory is None or part.accessory in setup.fitted
+        _machine_part(part, setup, placement)
+        for part in room.parts
+        if part.accessory is None or part.accessory in setup.fitted
     ]
+    every = frozenset(Stage)
     for name, solid in patient_solids(setup.patient):
-        on_table = [_patient_on_table(setup, piece) for piece in _facets(solid, setup)]
-        parts.append(_on_couch(name, "patient", on_table, frozenset(Stage), setup))
-    for device in setup.devices:
-        parts.append(_on_couch(device.name, "device", _facets(device.solid, setup), frozenset(Stage), setup))
+        on_table = [placement.patient_on_table(piece) for piece in _facets(solid, setup)]
+        parts.append(_on_couch(name, "patient", on_table, every, setup, placement))
+    parts.extend(
+        _on_couch(device.name, "device", _facets(device.solid, setup), every, setup, placement)
+        for device in setup.devices
+    )
     return tuple(parts)
-
-
-def table_position(setup: Setup) -> Array:
-    """Return T, shape (3,), mm: where the stages hold the table-top origin so that the isocentre stays put.
-
-    From r_f = Rz(couch) [E + Rz(eccentric) (T + Rx(pitch) Ry(roll) p)] = 0.
-    """
-    eccentric, tilt = _couch_turns(setup)
-    E = np.array(setup.room.couch.eccentric_offset_mm)
-    return eccentric.inv().apply(-E) - tilt.apply(isocentre_on_table(setup))
-
-
-def isocentre_on_table(setup: Setup) -> Array:
-    """Return the isocentre in table-top coordinates, shape (3,), mm."""
-    stated = setup.isocentre
-    if stated.landmark is None:
-        return _patient_on_table(setup, np.array(stated.dicom_mm))
-    left, head, front = stated.offset_mm
-    # DICOM PS3.3 C.7.6.2.1.1: x grows to the patient's left, y to the back, z to the head.
-    return _patient_on_table(setup, landmarks_patient(setup.patient)[stated.landmark] + np.array([left, -front, head]))
 
 
 def asked(first: Standing, second: Standing, setup: Setup) -> bool:
@@ -109,7 +139,9 @@ def required_mm(first: Standing, second: Standing, setup: Setup) -> float:
     """Return fixed + k * sqrt(sum of squares); components for patients only where one of the two is no machine."""
     with_patient = not first.kind == second.kind == "machine"
     rule = setup.required
-    return rule.fixed_mm + rule.k * math.hypot(*(c.sd_mm for c in rule.components if with_patient or not c.patient_only))
+    return rule.fixed_mm + rule.k * math.hypot(
+        *(c.sd_mm for c in rule.components if with_patient or not c.patient_only)
+    )
 
 
 def axes_of(patient_position: str) -> Array:
@@ -118,14 +150,29 @@ def axes_of(patient_position: str) -> Array:
     return np.array([-unit[a[1]] if a[0] == "-" else unit[a] for a in PATIENT_AXES[patient_position].split()])
 
 
+@lru_cache(maxsize=512)
+def _faceted(solid: Solid, max_excess_mm: float) -> tuple[Array, ...]:
+    return solid.faceted(max_excess_mm).pieces
+
+
 def _facets(solid: Solid, setup: Setup) -> list[Array]:
-    return list(solid.faceted(setup.room.max_excess_mm).pieces)
+    return list(_faceted(solid, setup.room.max_excess_mm))
 
 
-def _machine_part(part: Part, setup: Setup) -> Standing:
+def _isocentre_dicom(setup: Setup) -> Array:
+    """Return the isocentre in DICOM patient axes, shape (3,), mm."""
+    stated = setup.isocentre
+    if stated.landmark is None:
+        return np.array(stated.dicom_mm)
+    left, head, front = stated.offset_mm
+    # DICOM PS3.3 C.7.6.2.1.1: x grows to the patient's left, y to the back, z to the head.
+    return landmarks_patient(setup.patient)[stated.landmark] + np.array([left, -front, head])
+
+
+def _machine_part(part: Part, setup: Setup, placement: Placement) -> Standing:
     drawn = [_moved_by_arm(part, setup, piece) for piece in _facets(part.solid, setup)]
     if part.mount is Mount.COUCH:
-        return _on_couch(part.name, part.kind, drawn, part.follows, setup)
+        return _on_couch(part.name, part.kind, drawn, part.follows, setup, placement)
     if part.mount is Mount.FIXED:
         return Standing(part.name, "room", part.kind, "nothing", tuple(drawn))
     if part.mount is Mount.COLLIMATOR and setup.collimator_deg is None:
@@ -136,35 +183,18 @@ def _machine_part(part: Part, setup: Setup) -> Standing:
     return Standing(part.name, "gantry", part.kind, "gantry", tuple(drawn))
 
 
-def _on_couch(name: str, kind: str, pieces: list[Array], follows: frozenset[Stage], setup: Setup) -> Standing:
+def _on_couch(
+    name: str, kind: str, pieces: list[Array], follows: frozenset[Stage], setup: Setup, placement: Placement
+) -> Standing:
     """Return a couch part as it stands at couch 0, each stage that it does not follow left at zero."""
-    eccentric, tilt = _couch_turns(setup)
-    T = table_position(setup)
-    for axis, stage in enumerate((Stage.LATERAL, Stage.LONGITUDINAL, Stage.VERTICAL)):
-        T[axis] *= stage in follows
+    slides = [stage in follows for stage in (Stage.LATERAL, Stage.LONGITUDINAL, Stage.VERTICAL)]
     if Stage.PITCH_ROLL in follows:
-        pieces = [tilt.apply(piece) for piece in pieces]
-    pieces = [piece + T for piece in pieces]
+        pieces = [placement.tilt.apply(piece) for piece in pieces]
+    pieces = [piece + placement.table * slides for piece in pieces]
     if Stage.ECCENTRIC in follows:
-        pieces = [eccentric.apply(piece) + np.array(setup.room.couch.eccentric_offset_mm) for piece in pieces]
+        offset = np.array(setup.room.couch.eccentric_offset_mm)
+        pieces = [placement.eccentric.apply(piece) + offset for piece in pieces]
     return Standing(name, "couch", kind, "couch" if Stage.TURNTABLE in follows else "nothing", tuple(pieces))
-
-
-def _couch_turns(setup: Setup) -> tuple[Rotation, Rotation]:
-    """Return the eccentric turn, and pitch about X with roll about the pitched Y."""
-    tilt = Rotation.from_euler("XY", [setup.pitch_deg, setup.roll_deg], degrees=True)
-    return Rotation.from_euler("Z", setup.eccentric_deg, degrees=True), tilt
-
-
-def _patient_on_table(setup: Setup, points_dicom: Array) -> Array:
-    """Return points, (..., 3), of the patient in table-top coordinates: lying where the tape measure says."""
-    to_table = axes_of(setup.patient_position).T
-    pieces = [piece for _, solid in patient_solids(setup.patient) for piece in _facets(solid, setup)]
-    lying = np.vstack(pieces) @ to_table.T
-    where = setup.on_table
-    head_end = setup.room.couch.head_end_mm
-    shift = [where.lateral_mm, head_end - where.from_head_end_mm - lying[:, 1].max(), where.height_mm - lying[:, 2].min()]
-    return points_dicom @ to_table.T + np.array(shift)
 
 
 def _moved_by_arm(part: Part, setup: Setup, points: Array) -> Array:

@@ -12,12 +12,11 @@ from tests.app.files.assessments import SETUP, one_couch_angle, provenance
 BEGINNINGS = {".xlsx": b"PK", ".csv": b"couch_deg,", ".json": b"{", ".png": b"\x89PNG", ".pdf": b"%PDF"}
 
 
-@pytest.mark.parametrize("suffix", BEGINNINGS)
-@pytest.mark.parametrize("shout", [False, True])
-def test_the_suffix_chooses_the_format(suffix: str, shout: bool, tmp_path: Path) -> None:
-    path = tmp_path / ("result" + (suffix.upper() if shout else suffix))
+@pytest.mark.parametrize("suffix", [*BEGINNINGS, ".CSV"])
+def test_the_suffix_chooses_the_format(suffix: str, tmp_path: Path) -> None:
+    path = tmp_path / f"result{suffix}"
     write_map(one_couch_angle(), provenance(one_couch_angle()), path)
-    assert path.read_bytes().startswith(BEGINNINGS[suffix])
+    assert path.read_bytes().startswith(BEGINNINGS[suffix.lower()])
     assert [entry.name for entry in tmp_path.iterdir()] == [path.name]
 
 
