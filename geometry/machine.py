@@ -144,7 +144,7 @@ class Accessory:
 
 @dataclass(frozen=True)
 class JoinedPair:
-    """Two parts, or a part and itself, that touch by construction and are not checked; the reason is exported."""
+    """Two parts of different sides that touch by construction and are not checked; the reason is exported."""
 
     first: str
     second: str

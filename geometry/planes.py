@@ -33,7 +33,7 @@ class Plane:
 
 
 def planes_of(scene: Scene) -> tuple[Plane, ...]:
-    """Return the planes that have pairs to check."""
+    """Return the planes that have pairs to check. GeometryError where there are none at all."""
     gantry = _members(scene, Motion.GANTRY)
     turntable = _members(scene, Motion.TURNTABLE)
     still = _members(scene, Motion.STILL)
@@ -45,7 +45,10 @@ def planes_of(scene: Scene) -> tuple[Plane, ...]:
         _plane(scene, Motion.STILL, still_room, Motion.TURNTABLE, turntable),
         _plane(scene, Motion.STILL, still_room, Motion.STILL, still_couch),
     )
-    return tuple(plane for plane in found if len(plane.pairs.i))
+    planes = tuple(plane for plane in found if len(plane.pairs.i))
+    if not planes:
+        raise GeometryError("the room has no part to keep clear of; allowed: at least one that is not joined")
+    return planes
 
 
 def checked_part_pairs(scene: Scene) -> tuple[tuple[ScenePart, ScenePart], ...]:

@@ -87,7 +87,8 @@ def test_gantry_90_brings_the_head_to_the_right_of_one_who_looks_at_the_gantry()
 
 
 def test_pitch_of_10_lifts_the_head_end() -> None:
-    # IEC 61217 and DICOM PS3.3 C.8.8.25: positive about X; from the definition (a note in C.8.8.14.12 can be read both ways).
+    # IEC 61217 and DICOM PS3.3 C.8.8.25: positive about X. From the definition, since a note in C.8.8.14.12 can be read
+    # both ways.
     assert R_tilt(10.0, 0.0) @ [0.0, 100.0, 0.0] == pytest.approx([0.0, 98.481, 17.365], abs=5e-4)
 
 

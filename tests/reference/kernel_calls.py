@@ -82,9 +82,7 @@ def _ask(a, b, first, second, only, turns, limit, warm, memory, lower, upper, st
             q = b.vertices[memory.corners[pair, c, 1]]
             for axis in range(3):
                 points[k, 0, axis] += weight * a.vertices[memory.corners[pair, c, 0], axis]
-                points[k, 1, axis] += weight * (
-                    t[3 * axis] * q[0] + t[3 * axis + 1] * q[1] + t[3 * axis + 2] * q[2]
-                )
+                points[k, 1, axis] += weight * (t[3 * axis] * q[0] + t[3 * axis + 1] * q[1] + t[3 * axis + 2] * q[2])
 
 
 def ask_pair(first: Array, second: Array) -> Answers:
