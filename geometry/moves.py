@@ -2,7 +2,7 @@
 
 import math
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 from geometry.angle_graph import AngleGraph, Speeds, speeds_of
@@ -164,9 +164,11 @@ class MovePlanner:
             verdicts.append(self._prover.verdict(points))
             if verdicts[-1].state is State.PERMITTED:
                 return Move(after - 1, after, points, self._seconds(points), verdicts[-1])
-        return Move(
-            after - 1, after, candidates[0], math.nan, verdicts[0], self._to_blame(graph.in_the_way(way), verdicts)
-        )
+        blame = self._to_blame(graph.in_the_way(way), verdicts)
+        reason = f"no proved way from {fields[after - 1].name!r} to {fields[after].name!r}"
+        if blame is not None:
+            reason += "; in the way: " + " and ".join(self._scene.parts[part].label for part in blame)
+        return Move(after - 1, after, candidates[0], math.nan, replace(verdicts[0], reason=reason), blame)
 
     def _to_blame(self, known: tuple[int, int] | None, verdicts: Sequence[Verdict]) -> tuple[int, int] | None:
         if known is not None:

@@ -16,12 +16,31 @@ from geometry.kernel import BEYOND, FAILED, ROUNDING_MM, Hulls, Memory, compiled
 DEPTH = 24
 
 
+class Groups(NamedTuple):
+    """Neighbouring pairs of one piece of body a that are looked at together: g holds pairs first[g] to first[g + 1].
+
+    `centres` (groups, 3) and `radii` (groups,) are spheres about all their pieces of b, `reach` (groups,) is their
+    greatest reach, `required` (groups,) the most that any of them must keep.
+    """
+
+    first: NDArray[np.int32]
+    centres: NDArray[np.float64]
+    radii: NDArray[np.float64]
+    reach: NDArray[np.float64]
+    required: NDArray[np.float64]
+
+
+# No pair begins at place -1: every pair is looked at by itself.
+NO_GROUPS = Groups(np.full(1, -1, np.int32), np.zeros((0, 3)), np.zeros(0), np.zeros(0), np.zeros(0))
+
+
 class Pairs(NamedTuple):
     """Which pieces are checked: piece `i` of body a against piece `j` of body b, `required` mm, each (pairs,)."""
 
     i: NDArray[np.int32]
     j: NDArray[np.int32]
     required: NDArray[np.float64]
+    groups: Groups = NO_GROUPS
 
 
 class Angles(NamedTuple):
@@ -87,14 +106,20 @@ def chord(angle):
 
 
 @inlined
+def _between(p, i, q, j, turn):
+    """Return the distance of point i of p, in a's system, and point j of q, in b's."""
+    r0, r1, r2, r3, r4, r5, r6, r7, r8 = turn
+    x, y, z = q[j, 0], q[j, 1], q[j, 2]
+    dx = p[i, 0] - (r0 * x + r1 * y + r2 * z)
+    dy = p[i, 1] - (r3 * x + r4 * y + r5 * z)
+    dz = p[i, 2] - (r6 * x + r7 * y + r8 * z)
+    return np.sqrt(dx * dx + dy * dy + dz * dz)
+
+
+@inlined
 def _between_spheres(a, i, b, j, turn):
     """Return the distance of two pieces' enclosing spheres, negative where they overlap: a lower bound."""
-    r0, r1, r2, r3, r4, r5, r6, r7, r8 = turn
-    x, y, z = b.centres[j, 0], b.centres[j, 1], b.centres[j, 2]
-    dx = a.centres[i, 0] - (r0 * x + r1 * y + r2 * z)
-    dy = a.centres[i, 1] - (r3 * x + r4 * y + r5 * z)
-    dz = a.centres[i, 2] - (r6 * x + r7 * y + r8 * z)
-    return np.sqrt(dx * dx + dy * dy + dz * dz) - a.radii[i] - b.radii[j]
+    return _between(a.centres, i, b.centres, j, turn) - a.radii[i] - b.radii[j]
 
 
 @pasted
@@ -144,8 +169,20 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
     slack_pair = -1
     slack = np.inf
     kept = 0
-    for step in range(lists.length[above]):
-        k = leader if step == 0 else (step if step > leader else step - 1)
+    group = 0
+    following = -1
+    while following < lists.length[above]:
+        led = following < 0
+        k = leader if led else following
+        following += 1
+        if not led:
+            if above == 0 and k == pairs.groups.first[group]:
+                group += 1
+                if _group_settled(a, pairs, group - 1, turn, chord_a, chord_b, near, tight):
+                    following = pairs.groups.first[group]
+                    continue
+            if k == leader:
+                continue
         p = lists.pair[above, k]
         i = pairs.i[p]
         j = pairs.j[p]
@@ -155,11 +192,11 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
         by_b = abs(at_b - lists.at_b[above, k]) + half_b
         brought = low - fall(a.reach[i], b.reach[j], lists.rate_a[above, k], lists.rate_b[above, k], by_a, by_b)
         brought = max(brought, 0.0)
-        if step > 0 and brought >= near and brought - required >= tight:
+        if not led and brought >= near and brought - required >= tight:
             continue
         motion = a.reach[i] * chord_a + b.reach[j] * chord_b + ROUNDING_MM
         brought = max(brought, _between_spheres(a, i, b, j, turn) - motion)
-        if step > 0 and brought >= near and brought - required >= tight:
+        if not led and brought >= near and brought - required >= tight:
             continue
         limit = max(near, tight + required)
         low, high, _ = distance(a, i, b, j, turn, memory, p, limit, half_a, half_b)
@@ -189,6 +226,16 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
         kept += 1
     _drop_settled(pairs, lists, depth, kept, near, tight, nearest, tightest)
     return tight, bound, bound_pair, slack_bound, slack_pair, slack
+
+
+@pasted
+def _group_settled(a, pairs, group, turn, chord_a, chord_b, near, tight):
+    """Tell whether no pair of a group can matter in a cell, by the spheres about them all."""
+    groups = pairs.groups
+    i = pairs.i[groups.first[group]]
+    between = _between(a.centres, i, groups.centres, group, turn) - a.radii[i] - groups.radii[group]
+    least = max(between - a.reach[i] * chord_a - groups.reach[group] * chord_b - ROUNDING_MM, 0.0)
+    return least >= near and least - groups.required[group] >= tight
 
 
 @pasted

@@ -4,16 +4,23 @@ How two bodies stand to each other depends on the gantry angle, the couch angle,
 """
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
+from numpy.typing import NDArray
 
 from geometry.errors import GeometryError
 from geometry.hulls import packed_hulls
 from geometry.kernel import Hulls
 from geometry.machine import JoinedPair
-from geometry.plane_kernel import Pairs
+from geometry.plane_kernel import Groups, Pairs
 from geometry.scene import Motion, Scene, ScenePart, Side
 
+Array = NDArray[np.float64]
+Indices = NDArray[np.intp]
+
+# Pairs that are looked at together before they are looked at one by one.
+GROUP = 8
 # The gantry system turns about its Y, the patient support about its Z.
 _TURN_AXIS = {Motion.GANTRY: 1, Motion.TURNTABLE: 2, Motion.STILL: None}
 
@@ -91,8 +98,31 @@ def _plane(scene: Scene, motion_a: Motion, members_a: list[int], motion_b: Motio
     needed = required[a.part[i], b.part[j]]
     if not (np.isfinite(needed) & (needed > 0.0)).all():
         raise GeometryError(f"required clearance = {needed.min():g} mm; allowed: above 0 for every pair")
-    pairs = Pairs(i.astype(np.int32), j.astype(np.int32), needed)
+    pairs = Pairs(i.astype(np.int32), j.astype(np.int32), needed, _groups(a, b, i, j, needed))
     return Plane(a, b, pairs, Motion.GANTRY in (motion_a, motion_b), Motion.TURNTABLE in (motion_a, motion_b))
+
+
+def _groups(a: Hulls, b: Hulls, i: Indices, j: Indices, required: Array) -> Groups:
+    """Put neighbouring pairs of the same piece of a, up to `GROUP` of them, into groups."""
+    place = np.arange(len(i))
+    start_of_piece = np.searchsorted(i, np.arange(len(a.radii)))
+    starts = np.flatnonzero((place - start_of_piece[i]) % GROUP == 0)
+    first = np.append(starts, len(i))
+    spheres = [_sphere(b, np.unique(j[start:stop])) for start, stop in pairwise(first)]
+    return Groups(
+        first.astype(np.int32),
+        np.array([centre for centre, _ in spheres]).reshape(-1, 3),
+        np.array([radius for _, radius in spheres]),
+        np.array([b.reach[j[start:stop]].max() for start, stop in pairwise(first)]),
+        np.array([required[start:stop].max() for start, stop in pairwise(first)]),
+    )
+
+
+def _sphere(hulls: Hulls, pieces: Indices) -> tuple[Array, float]:
+    """Return centre and radius of a sphere about some pieces."""
+    points = np.concatenate([hulls.vertices[hulls.first[p] : hulls.first[p + 1]] for p in pieces])
+    centre = 0.5 * (points.min(axis=0) + points.max(axis=0))
+    return centre, float(np.linalg.norm(points - centre, axis=1).max())
 
 
 def _body(scene: Scene, members: list[int], motion: Motion) -> Hulls:

@@ -22,7 +22,7 @@ Flags = NDArray[np.bool_]
 
 MOST_CONTOURS: Final = 2_000
 MOST_POINTS: Final = 500_000
-MOST_POINTS_OF_A_SLICE: Final = 20_000
+MOST_POINTS_OF_A_SLICE: Final = 5_000
 MOST_PIECES: Final = 2_000
 # Outlines whose heights differ by no more than this are on one slice.
 SAME_SLICE_MM: Final = 0.01
