@@ -204,6 +204,9 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
         rate_b = memory.rate_b[p]
         falls = fall(a.reach[i], b.reach[j], rate_a, rate_b, half_a, half_b)
         least = max(low - falls, brought)
+        if not least >= 0.0:
+            # Not a number: nothing is known.
+            least = 0.0
         # An overlap deeper than the motion lasts through the whole cell.
         most = max(min(high + motion, _rise(low, high, falls, motion)), 0.0)
         if most < near:

@@ -28,8 +28,8 @@ def run_tiles(
 ) -> None:
     """Run `work` on all tiles, shape (n, 4), in threads, some rows a call. Raises Cancelled."""
     workers = min(threads or os.cpu_count() or 1, len(tiles))
-    # Rows dealt out like cards: neighbours share the hard places.
-    hands = [tiles[k::CALLS] for k in range(min(CALLS, len(tiles)))]
+    # Rows dealt out like cards: neighbours share the hard places. Contiguous, since numba compiles for each layout anew.
+    hands = [np.ascontiguousarray(tiles[k::CALLS]) for k in range(min(CALLS, len(tiles)))]
     scratch: queue.SimpleQueue[tuple[Memory, Lists]] = queue.SimpleQueue()
     for _ in range(workers):
         scratch.put(scratch_for(pairs))
