@@ -8,8 +8,8 @@ from itertools import pairwise
 import numpy as np
 from numpy.typing import NDArray
 
+from geometry.legs import Point
 from geometry.machine import Room
-from geometry.paths import Point
 from geometry.proof import Proof
 from geometry.queries import ProvedTable
 from geometry.spans import ANGLE_DEG, Tolerances

@@ -8,7 +8,8 @@ from itertools import pairwise
 from geometry.angle_graph import AngleGraph, Speeds, speeds_of
 from geometry.field_order import quickest_order
 from geometry.frames import unwrapped_deg
-from geometry.paths import PathProver, Point, Verdict
+from geometry.legs import Point, checked_points
+from geometry.paths import PathProver, Verdict
 from geometry.progress import Progress, Silent, stop_if_cancelled
 from geometry.proof import Interval, Proof
 from geometry.scene import Scene
@@ -83,7 +84,11 @@ class Order:
 
 
 def branches_of(field: Field, gantry_travel_deg: Interval, couch_travel_deg: Interval) -> tuple[tuple[Point, ...], ...]:
-    """Return the field's control points with whole turns added, each way that stays within both travels."""
+    """Return the field's control points with whole turns added, each way that stays within both travels.
+
+    Raises ValueError for control points that are no path.
+    """
+    checked_points(field.points_deg)
     gantries = _shifted([point[0] for point in field.points_deg], gantry_travel_deg)
     couches = _shifted([point[1] for point in field.points_deg], couch_travel_deg)
     return tuple(tuple(zip(gantry, couch, strict=True)) for gantry in gantries for couch in couches)
@@ -157,30 +162,35 @@ class MovePlanner:
             graph, way = finer, finer.way(start, stop)
         candidates = [way.points_deg]
         if way.blocked:
-            # The plane's proof is coarse: what the net refuses may yet be proved along one of the plain ways.
+            # The plane's proof is coarse: what the net refuses may yet be proved along it or along a plain way.
             candidates += [(start, (stop[0], start[1]), stop), (start, (start[0], stop[1]), stop)]
-        verdicts = []
-        for points in candidates:
-            verdicts.append(self._prover.verdict(points))
-            if verdicts[-1].state is State.PERMITTED:
-                return Move(after - 1, after, points, self._seconds(points), verdicts[-1])
-        blame = self._to_blame(graph.in_the_way(way), verdicts)
+        verdicts = {points: self._prover.verdict(points) for points in candidates}
+        for points in sorted(verdicts, key=self._seconds):
+            if verdicts[points].state is State.PERMITTED:
+                return Move(after - 1, after, _distinct(points), self._seconds(points), verdicts[points])
+        verdict = verdicts[way.points_deg]
+        blame = graph.in_the_way(way) or _blocking(verdict)
         reason = f"no proved way from {fields[after - 1].name!r} to {fields[after].name!r}"
         if blame is not None:
             reason += "; in the way: " + " and ".join(self._scene.parts[part].label for part in blame)
-        return Move(after - 1, after, candidates[0], math.nan, replace(verdicts[0], reason=reason), blame)
-
-    def _to_blame(self, known: tuple[int, int] | None, verdicts: Sequence[Verdict]) -> tuple[int, int] | None:
-        if known is not None:
-            return known
-        place = verdicts[0].first_short
-        return (place.machine_part, place.couch_part) if place is not None and place.machine_part >= 0 else None
+        return Move(after - 1, after, candidates[0], math.nan, replace(verdict, reason=reason), blame)
 
     def _seconds(self, points: Sequence[Point]) -> float:
         return math.fsum(
             abs(other[0] - one[0]) / self.speeds.gantry + abs(other[1] - one[1]) / self.speeds.couch
             for one, other in pairwise(points)
         )
+
+
+def _blocking(verdict: Verdict) -> tuple[int, int] | None:
+    """Return the parts that a verdict names where a path first fails."""
+    place = verdict.first_short
+    return (place.machine_part, place.couch_part) if place is not None and place.machine_part >= 0 else None
+
+
+def _distinct(points: Sequence[Point]) -> tuple[Point, ...]:
+    """Return the corners without those that repeat the one before; one at least."""
+    return tuple(point for k, point in enumerate(points) if k == 0 or point != points[k - 1])
 
 
 def _shifted(angles_deg: Sequence[float], travel_deg: Interval) -> list[tuple[float, ...]]:

@@ -12,7 +12,18 @@ import numpy as np
 from numpy.typing import NDArray
 
 from geometry.kernel import Memory
-from geometry.path_kernel import HALVINGS_OF_ONE, Least, Leg, Line, Open, prove_band, search_line
+from geometry.legs import (
+    FIRST_CELL_DEG,
+    ROUNDING_DEG,
+    Point,
+    Run,
+    checked_points,
+    halvings_for,
+    leg_of,
+    roots_of,
+    straight_runs,
+)
+from geometry.path_kernel import Least, Leg, Line, Open, prove_band, search_line
 from geometry.plane_kernel import Lists
 from geometry.planes import Plane, planes_of
 from geometry.progress import Progress, Silent, stop_if_cancelled
@@ -24,23 +35,15 @@ from geometry.sweep import angles_of, sweep_plane
 from geometry.tasks import scratch_for
 
 Array = NDArray[np.float64]
-Point = tuple[float, float]
 
 # Smallest cells of a band, deg: what a narrow pass may be wider than the tolerances and still be refused.
 RESOLUTION_DEG = 0.02
-# Cells of the first division, deg.
-FIRST_CELL_DEG = 8.0
 # Proved cells are divided further for the sake of the least bound while wider than this, deg.
 TIGHTEN_DEG = 0.25
 # Something short is found when it lasts longer than this on the path, deg.
 SHORT_DEG = 0.002
 # The nearest approach is sought to this, deg.
 COARSE_DEG = 0.03
-# The tolerances are widened by this to cover the rounding of the path and of cells, deg.
-_ROUNDING_DEG = 1e-9
-# Control points are at most so many, and their angles so large, deg: beyond is no path of a machine.
-MOST_POINTS = 100_000
-MOST_DEG = 1000.0
 
 
 @dataclass(frozen=True)
@@ -91,24 +94,6 @@ class Verdict:
         return self.least.clearance_mm if self.least else math.inf
 
 
-@dataclass(frozen=True)
-class _Run:
-    """Control points `first` to `last` on one straight line, passed in one sense; `share` (points,) from 0 to 1."""
-
-    first: int
-    start: Array
-    change: Array
-    share: Array
-
-    def point_deg(self, place: float) -> Point:
-        at = self.start + place * self.change
-        return float(at[0]), float(at[1])
-
-    def segment(self, place: float) -> int:
-        within = int(np.searchsorted(self.share, place, side="right")) - 1
-        return self.first + min(max(within, 0), max(len(self.share) - 2, 0))
-
-
 class PathProver:
     """Proves paths of one scene, one after the other.
 
@@ -141,7 +126,7 @@ class PathProver:
         reason = self._beyond(points)
         if reason:
             return Verdict(State.NO_TRAVEL, reason=reason)
-        runs = _runs(points)
+        runs = straight_runs(points)
         scratch = [scratch_for(plane.pairs) for plane in self._planes]
         line = self._search(runs, scratch, progress)
         if line.state is not State.PERMITTED:
@@ -163,11 +148,11 @@ class PathProver:
                 return f"{name} = {worst:g} deg is outside its travel {low:g} to {high:g}"
         return ""
 
-    def _search(self, runs: list["_Run"], scratch: list[tuple[Memory, Lists]], progress: Progress) -> Verdict:
+    def _search(self, runs: list[Run], scratch: list[tuple[Memory, Lists]], progress: Progress) -> Verdict:
         """Search the path itself: contact, short, or as yet permitted, with the nearest approach."""
         clearance, slack = np.full(1, np.inf), np.full(1, np.inf)
         nearest = tightest = (runs[0], 0.0)
-        first: tuple[_Run, float] | None = None
+        first: tuple[Run, float] | None = None
         for done, run in enumerate(runs):
             line = Line(clearance, np.full(1, -1.0), slack, np.full(1, -1.0), np.full(1, np.inf))
             if first is not None:
@@ -175,11 +160,11 @@ class PathProver:
                 line.first[0] = -1.0
             extent = float(np.abs(run.change).max())
             parts = max(math.ceil(extent / FIRST_CELL_DEG), 1)
-            halvings = _halvings(extent / parts, SHORT_DEG, 16)
-            coarse = _halvings(extent / parts, COARSE_DEG, 16)
+            halvings = halvings_for(extent / parts, SHORT_DEG, 16)
+            coarse = halvings_for(extent / parts, COARSE_DEG, 16)
             for plane, (memory, lists) in zip(self._planes, scratch, strict=True):
                 stop_if_cancelled(progress)
-                leg = _leg(plane, run, (0.0, 0.0))
+                leg = leg_of(plane, run, (0.0, 0.0))
                 self.evaluations += search_line(
                     plane.a, plane.b, plane.pairs, leg, parts, halvings, coarse, memory, lists, line
                 )
@@ -200,22 +185,22 @@ class PathProver:
             return Verdict(State.SHORT, nearest=near, first_short=self._exact(*first))
         return Verdict(State.PERMITTED, nearest=near)
 
-    def _exact(self, run: "_Run", place: float) -> Approach:
+    def _exact(self, run: Run, place: float) -> Approach:
         return self.exact(run.segment(place), *run.point_deg(place))
 
     def _prove(
-        self, runs: list["_Run"], scratch: list[tuple[Memory, Lists]], line: Verdict, progress: Progress
+        self, runs: list[Run], scratch: list[tuple[Memory, Lists]], line: Verdict, progress: Progress
     ) -> Verdict:
         """Prove the tolerance rectangle about every point of the path, run by run."""
-        around = self._tolerances.of_gantry_deg + _ROUNDING_DEG, self._tolerances.of_couch_deg + _ROUNDING_DEG
+        around = self._tolerances.of_gantry_deg + ROUNDING_DEG, self._tolerances.of_couch_deg + ROUNDING_DEG
         least: dict[str, Approach | None] = {"clearance": None, "slack": None}
         known = [np.full(1, np.inf), np.full(1, np.inf)]
         for done, run in enumerate(runs):
             first: tuple[float, Approach] | None = None
             for plane, (memory, lists) in zip(self._planes, scratch, strict=True):
                 stop_if_cancelled(progress)
-                leg = _leg(plane, run, around)
-                roots, halvings = _roots(leg, self._resolution_deg)
+                leg = leg_of(plane, run, around)
+                roots, halvings = roots_of(leg, self._resolution_deg)
                 found = _least(known[0], least["clearance"], "clearance"), _least(known[1], least["slack"], "slack")
                 place = Open(np.full(1, first[0] if first else np.inf), np.zeros(1), np.zeros(1), np.full(1, -1))
                 tighten = math.radians(TIGHTEN_DEG)
@@ -232,7 +217,7 @@ class PathProver:
             progress.report(0.5 + 0.5 * (done + 1) / len(runs), "path")
         return replace(line, least=least["clearance"], tightest=least["slack"])
 
-    def _in_the_way(self, plane: Plane, run: "_Run", place: Open) -> Approach:
+    def _in_the_way(self, plane: Plane, run: Run, place: Open) -> Approach:
         """Return the exact clearance at a reading, with the pair that stands in the way within its tolerances."""
         at = self._exact(run, float(place.first[0]))
         machine, other = _parts(plane, int(place.pair[0]))
@@ -281,100 +266,12 @@ def exact_approach(planes: Sequence[Plane], segment: int, gantry_deg: float, cou
     return Approach(segment, gantry_deg, couch_deg, clearance, slack, machine, other)
 
 
-def checked_points(points_deg: Sequence[Point]) -> Array:
-    """Return control points as an array (n, 2), deg. Raises ValueError for what is no path."""
-    if not 1 <= len(points_deg) <= MOST_POINTS:
-        raise ValueError(f"path of {len(points_deg)} control points; allowed: 1 to {MOST_POINTS}")
-    points = np.array(points_deg, dtype=np.float64).reshape(-1, 2)
-    if len(points) != len(points_deg) or not (np.abs(points) <= MOST_DEG).all():
-        raise ValueError(f"control points of a path: allowed are pairs of angles within {MOST_DEG:g} deg")
-    return points
-
-
-def _runs(points: Array) -> list[_Run]:
-    """Cut a path into straight runs: control points on one line, such as those of an arc, need no proof each."""
-    runs: list[_Run] = []
-    first = 0
-    while first < len(points) - 1 or not runs:
-        last = min(first + 1, len(points) - 1)
-        while last + 1 < len(points) and _straight(points[first : last + 2]):
-            last += 1
-        start, change = points[first], points[last] - points[first]
-        length2 = float(change @ change)
-        along = (points[first : last + 1] - start) @ change
-        share = along / length2 if length2 > 0.0 else np.linspace(0.0, 1.0, last - first + 1)
-        runs.append(_Run(first, start, change, share))
-        first = last
-    return runs
-
-
-def _straight(points: Array) -> bool:
-    """Tell whether the points, (n, 2), follow one another on a straight line, to far less than `_ROUNDING_DEG`."""
-    change = points[-1] - points[0]
-    length = float(np.hypot(*change))
-    if length == 0.0:
-        return bool((points == points[0]).all())
-    steps = np.diff(points, axis=0)
-    offset = points - points[0]
-    across = np.abs(offset[:, 0] * change[1] - offset[:, 1] * change[0]) / length
-    return bool((steps @ change >= 0.0).all() and across.max() <= 0.1 * _ROUNDING_DEG)
-
-
-def _leg(plane: Plane, run: _Run, around_deg: Point) -> Leg:
-    """Return a run as a plane sees it: an angle on which its pairs do not depend stays 0, without tolerance."""
-    gantry, couch = float(plane.with_gantry), float(plane.with_couch)
-    widened = [math.radians(around) for around in around_deg]
-    start, change = np.radians(run.start), np.radians(run.change)
-    return Leg(
-        gantry * float(start[0]),
-        couch * float(start[1]),
-        gantry * float(change[0]),
-        couch * float(change[1]),
-        gantry * widened[0],
-        couch * widened[1],
-    )
-
-
-def _roots(leg: Leg, resolution_deg: float) -> tuple[Array, NDArray[np.int64]]:
-    """Return rectangles (n, 4) that cover a leg's band, in its order, radians, and how often each may be halved.
-
-    The band is cut across the axis that turns more; each rectangle holds all of the band between its two cuts.
-    """
-    start = np.array([leg.gantry, leg.couch])
-    change = np.array([leg.by_gantry, leg.by_couch])
-    around = np.array([leg.around_gantry, leg.around_couch])
-    main = 0 if abs(leg.by_gantry) >= abs(leg.by_couch) else 1
-    low = min(start[main], start[main] + change[main]) - around[main]
-    high = max(start[main], start[main] + change[main]) + around[main]
-    count = max(math.ceil((high - low) / math.radians(FIRST_CELL_DEG)), 1)
-    cuts = np.linspace(low, high, count + 1)
-    if change[main] < 0.0:
-        cuts = cuts[::-1]
-    roots = np.empty((count, 4))
-    for k in range(count):
-        ends = sorted((cuts[k], cuts[k + 1]))
-        places = np.array([0.0, 1.0])
-        if change[main] != 0.0:
-            places = (np.array(ends) + np.array([-1.0, 1.0]) * around[main] - start[main]) / change[main]
-        across = start[1 - main] + np.clip(places, 0.0, 1.0) * change[1 - main]
-        roots[k, 2 * main : 2 * main + 2] = ends
-        other = 2 * (1 - main)
-        roots[k, other : other + 2] = across.min() - around[1 - main], across.max() + around[1 - main]
-    widths = np.degrees(roots[:, 1::2] - roots[:, ::2])
-    halvings = [[_halvings(float(width), resolution_deg, HALVINGS_OF_ONE) for width in pair] for pair in widths]
-    return roots, np.array(halvings, np.int64)
-
-
-def _halvings(width_deg: float, resolution_deg: float, most: int) -> int:
-    return min(max(math.ceil(math.log2(max(width_deg, 1e-12) / resolution_deg)), 0), most)
-
-
 def _least(known: Array, so_far: Approach | None, kind: str) -> Least:
     bound = math.inf if so_far is None else (so_far.clearance_mm if kind == "clearance" else so_far.slack_mm)
     return Least(known, np.full(1, bound), np.zeros(1), np.zeros(1), np.full(1, -1))
 
 
-def _bound(plane: Plane, run: _Run, leg: Leg, found: Least, kind: str) -> Approach:
+def _bound(plane: Plane, run: Run, leg: Leg, found: Least, kind: str) -> Approach:
     """Return a proved bound at its cell's middle; the segment is that of the nearest point of the path."""
     at = np.array(
         [

@@ -27,6 +27,8 @@ EDGE_DEG = (0.02, 45.0)
 LARGEST_TOLERANCE_DEG = 45.0
 # First cells each way that are proved one after the other, with what was learnt from one to the next.
 TILE = 4
+# Smallest cells of one call into compiled code, some hundredths of a second.
+CELLS_OF_CALL = 40_000
 # Angles nearer than this to the border of a step count as on it.
 _ON_BORDER = 1e-7
 
@@ -198,7 +200,7 @@ def prove_plane(
     def work(hand: Tiles, memory: Memory, lists: Lists) -> None:
         evaluated.put(prove_tiles(plane.a, plane.b, plane.pairs, strip_a, strip_b, hand, first, memory, lists, proved))
 
-    run_tiles(work, tiles, plane.pairs, progress, "proof", threads)
+    run_tiles(work, tiles, plane.pairs, progress, "proof", threads, rows * columns // CELLS_OF_CALL)
     return proved, sum(evaluated.get() for _ in range(evaluated.qsize()))
 
 

@@ -20,6 +20,8 @@ Indices = NDArray[np.int32]
 # Poses each way that share a sifting of the pairs, and how many where only one axis turns.
 BLOCK = 12
 POSES = BLOCK * BLOCK
+# Of one call into compiled code, some hundredths of a second.
+POSES_OF_CALL = 5000
 
 
 @dataclass(frozen=True, eq=False)
@@ -95,7 +97,7 @@ def sweep_plane(
     def work(hand: Tiles, memory: Memory, lists: Lists) -> None:
         sweep_tiles(plane.a, plane.b, plane.pairs, gantry, couch, hand, block, memory, lists, field)
 
-    run_tiles(work, tiles, plane.pairs, progress, "exact clearance", threads)
+    run_tiles(work, tiles, plane.pairs, progress, "exact clearance", threads, rows * columns // POSES_OF_CALL)
     return field
 
 

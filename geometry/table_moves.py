@@ -8,7 +8,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from geometry.kernel import ROUNDING_MM, Hulls
-from geometry.paths import Approach, PathProver, Point, exact_approach
+from geometry.legs import Point
+from geometry.paths import Approach, PathProver, exact_approach
 from geometry.plane_kernel import Pairs
 from geometry.planes import Plane, planes_of
 from geometry.progress import Progress, Silent, stop_if_cancelled

@@ -14,7 +14,7 @@ from geometry.progress import Progress, stop_if_cancelled
 
 Tiles = NDArray[np.int64]
 
-# Calls into compiled code of one run: each costs about 0.3 ms to unpack its arguments, and cancel waits for one.
+# Calls into compiled code of one run, at least: each costs about 0.3 ms to unpack its arguments.
 CALLS = 24
 
 
@@ -25,11 +25,16 @@ def run_tiles(
     progress: Progress,
     message: str,
     threads: int | None = None,
+    calls: int = CALLS,
 ) -> None:
-    """Run `work` on all tiles, shape (n, 4), in threads, some rows a call. Raises Cancelled."""
+    """Run `work` on all tiles, shape (n, 4), in threads, in that many calls or more. Raises Cancelled.
+
+    Cancel waits for a call in each thread: what takes longer wants more of them.
+    """
     workers = min(threads or os.cpu_count() or 1, len(tiles))
-    # Rows dealt out like cards: neighbours share the hard places. Contiguous, since numba compiles for each layout anew.
-    hands = [np.ascontiguousarray(tiles[k::CALLS]) for k in range(min(CALLS, len(tiles)))]
+    # Rows dealt out like cards: neighbours share the hard places. Contiguous: numba compiles for each layout anew.
+    count = min(max(calls, CALLS), len(tiles))
+    hands = [np.ascontiguousarray(tiles[k::count]) for k in range(count)]
     scratch: queue.SimpleQueue[tuple[Memory, Lists]] = queue.SimpleQueue()
     for _ in range(workers):
         scratch.put(scratch_for(pairs))

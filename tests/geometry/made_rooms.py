@@ -1,14 +1,19 @@
-"""Rooms of a few blocks, made up so that what must come out can be worked out on paper."""
+"""Rooms of a few blocks and planes of a few cells, made up so that what must come out can be worked out on paper."""
+
+from functools import cache
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
 from geometry.machine import EVERY_STAGE, Axis, Couch, Mount, Part, Room, Stage
+from geometry.proof import Proof, Steps
+from geometry.scene import Scene, build_scene
 from geometry.setup import Isocentre, OnTable, Required, Setup, Surface
 from geometry.solids import Box, Placed
 
 Array = NDArray[np.float64]
+Flags = NDArray[np.bool_]
 Interval = tuple[float, float]
 Vector = tuple[float, float, float]
 
@@ -103,3 +108,17 @@ def on_table(solid: Placed, *, pitch_deg: float = 0.0, roll_deg: float = 0.0, ec
     back[:3, :3] = stages.inv().as_matrix()
     back[:3, 3] = ISOCENTRE_TABLETOP
     return Part("table", Mount.COUCH, Placed(solid.solid, back @ solid.matrix), EVERY_STAGE)
+
+
+@cache
+def plain_scene() -> Scene:
+    """Return a scene of three parts, the patient the last."""
+    return build_scene(made_setup(on_gantry(block((9.0,) * 3, (0, 0, 500))), in_room(block((9.0,) * 3, (0, 900, 0)))))
+
+
+def made_proof(proved: Flags, gantry: Steps, couch: Steps) -> Proof:
+    """Return a proof of the given cells, each with a clearance of its own."""
+    clearance = np.where(proved, 10.0 + np.arange(proved.size).reshape(proved.shape), np.nan).astype(np.float32)
+    machine = np.where(proved, 0, 1).astype(np.int32)
+    other = np.full(proved.shape, 2, np.int32)
+    return Proof(gantry, couch, clearance - 5.0, clearance, machine, other, np.zeros(proved.shape, np.int8), 0)

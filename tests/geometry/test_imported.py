@@ -103,19 +103,19 @@ def grown_blob(rng: np.random.Generator, shape: tuple[int, int, int], size: int)
     return filled
 
 
-@given(st.integers(0, 2**32 - 1), st.booleans(), st.integers(5, 30))
-@settings(max_examples=6)
+@given(st.integers(0, 2**32 - 1), st.booleans(), st.integers(5, 25))
+@settings(max_examples=4)
 def test_pieces_of_any_voxel_surface_contain_it_and_stand_out_no_more_than_stated(
     seed: int, turned: bool, size: int
 ) -> None:
     """Straight ones have faces and edges exactly where cuts are made; turned ones are in general position."""
     rng = np.random.default_rng(seed)
     turn = Rotation.random(rng=rng) if turned else Rotation.identity()
-    solid = Voxels(grown_blob(rng, (4, 5, 8), size), turn)
-    mesh = ClosedMesh(solid.vertices, solid.faces, most_pieces=25)
+    solid = Voxels(grown_blob(rng, (3, 4, 6), size), turn)
+    mesh = ClosedMesh(solid.vertices, solid.faces, most_pieces=20)
     faceted = mesh.faceted(0.5)
     assert_sound(faceted)
-    assert len(faceted.pieces) <= 25
+    assert len(faceted.pieces) <= 20
     assert outside_mm(faceted, solid.random_points(rng, 2000)) <= 1e-6
     assert outside_mm(faceted, solid.vertices) <= 1e-6
     assert solid.distance_mm(samples(faceted, rng)).max() <= faceted.excess_mm + 1e-6
@@ -166,15 +166,15 @@ def test_a_ring_keeps_its_hole() -> None:
 
 def test_legs_side_by_side_are_parted_though_they_join_above() -> None:
     """A fold that a hull would fill: two legs of 100 x 100 mm, 60 mm apart, under a trunk."""
-    filled = np.zeros((13, 5, 20), dtype=bool)
-    filled[:, :, 12:] = True
-    filled[:5, :, :12] = True
-    filled[8:, :, :12] = True
+    filled = np.zeros((13, 5, 14), dtype=bool)
+    filled[:, :, 8:] = True
+    filled[:5, :, :8] = True
+    filled[8:, :, :8] = True
     solid = Voxels(filled, Rotation.identity())
     faceted = ClosedMesh(solid.vertices, solid.faces).faceted(0.5)
     assert len(faceted.pieces) <= 12
     assert faceted.excess_mm <= 10.0
-    gap = np.array([[6.5, 2.5, 6.0]]) * VOXEL_MM + VOXEL_MM
+    gap = np.array([[6.5, 2.5, 4.0]]) * VOXEL_MM + VOXEL_MM
     assert outside_mm(faceted, gap) > 20.0
 
 

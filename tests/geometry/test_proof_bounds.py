@@ -8,6 +8,7 @@ import json
 import os
 import subprocess
 import sys
+from pathlib import Path
 
 import numpy as np
 import pytest
@@ -21,6 +22,7 @@ from geometry.kernel import Hulls
 from geometry.proof import Proof, prove
 from geometry.scene import build_scene
 from geometry.setup import Setup
+from geometry.solids import Placed
 from geometry.spans import permitted_runs
 from geometry.sweep import sweep
 from tests.geometry.made_rooms import block, in_room, made_setup, on_gantry, on_still_couch, on_table, on_turntable
@@ -28,11 +30,14 @@ from tests.reference.distances import LeastDistances
 
 Array = NDArray[np.float64]
 
+ROOT = Path(__file__).resolve().parents[2]
+
 # A block of the gantry this high turns about Y as fast, along X, as a block of the couch this far out about Z.
 ARM_MM = 800.0
 REQUIRED_MM = 5.0
-SMALL_MM = 2.0
-LARGE_MM = 4.0
+# What moves is nearly a point; what it meets is a plate, long enough for it not to slide off.
+POINT_MM = 0.5
+PLATE_MM = (1.0, 3.0, 1.0)
 
 TILT = {"pitch_deg": 3.0, "roll_deg": -2.0}
 MOUNTS = [
@@ -43,27 +48,45 @@ MOUNTS = [
     "gantry and eccentric",
     "gantry and still",
 ]
+BOTH_MOVE = {"gantry and turntable", "gantry and tilted", "gantry and eccentric"}
 
 
-def nearing(mounts: str, gap_mm: float, cell_deg: float, normal_deg: float = 0.0, small_mm: float = SMALL_MM) -> Setup:
-    """Return two blocks at (0, ARM, ARM), `gap_mm` apart, that near each other as the angles fall from 0 to -cell_deg.
+def nearing(mounts: str, gap_mm: float, cell_deg: float, normal_deg: float) -> Setup:
+    """Return two blocks near (0, ARM, ARM) that near each other as the angles fall from 0 to -cell_deg.
 
-    The faces that meet are square to X turned by `normal_deg` about Z. Both travels are one cell.
+    In the middle of that cell they are `gap_mm` apart, with faces square to X turned by `normal_deg` about Z. Both
+    travels are one cell.
     """
     turn = Rotation.from_euler("Z", normal_deg, degrees=True)
-    apart = turn.apply([gap_mm + small_mm / 2.0 + LARGE_MM / 2.0, 0.0, 0.0])
-    mover = block((small_mm,) * 3, tuple(np.array([0.0, ARM_MM, ARM_MM]) + apart), turn)
-    target = block((LARGE_MM,) * 3, (0.0, ARM_MM, ARM_MM), turn)
+    where = np.array([0.0, ARM_MM, ARM_MM])
+    apart = turn.apply([gap_mm + POINT_MM / 2.0 + PLATE_MM[0] / 2.0, 0.0, 0.0])
+
+    def at_zero(size_mm: tuple[float, float, float], centre: Array, axis: str) -> Placed:
+        """Return the block as it stands at angle 0, so that it comes to `centre` in the middle of the cell."""
+        back = Rotation.from_euler(axis, cell_deg / 2.0, degrees=True)
+        return block(size_mm, tuple(back.apply(centre)), back * turn)
+
+    point = at_zero((POINT_MM,) * 3, where + apart, "Y")
+    plate = at_zero(PLATE_MM, where, "Z")
+    still_point = block((POINT_MM,) * 3, tuple(where + apart), turn)
+    still_plate = block(PLATE_MM, tuple(where), turn)
     parts, stages = {
-        "gantry": ((on_gantry(mover), in_room(target)), {}),
-        "turntable": ((in_room(mover), on_turntable(target)), {}),
-        "gantry and turntable": ((on_gantry(mover), on_turntable(target)), {}),
-        "gantry and tilted": ((on_gantry(mover), on_table(target, **TILT)), TILT),
-        "gantry and eccentric": ((on_gantry(mover), on_table(target, eccentric_deg=40.0)), {"eccentric_deg": 40.0}),
-        "gantry and still": ((on_gantry(mover), on_still_couch(target)), {}),
+        "gantry": ((on_gantry(point), in_room(still_plate)), {}),
+        "turntable": ((in_room(still_point), on_turntable(plate)), {}),
+        "gantry and turntable": ((on_gantry(point), on_turntable(plate)), {}),
+        "gantry and tilted": ((on_gantry(point), on_table(plate, **TILT)), TILT),
+        "gantry and eccentric": ((on_gantry(point), on_table(plate, eccentric_deg=40.0)), {"eccentric_deg": 40.0}),
+        "gantry and still": ((on_gantry(point), on_still_couch(still_plate)), {}),
     }[mounts]
     travel = (-cell_deg, 0.0)
     return made_setup(*parts, gantry=travel, couch=travel, required_mm=REQUIRED_MM, **stages)
+
+
+def leaving(mounts: str, spare_mm: float, cell_deg: float, normal_deg: float = 0.0) -> Setup:
+    """Return blocks so far apart that they keep a slack of about `spare_mm` where they are nearest."""
+    nearing_mm = ARM_MM * np.radians(cell_deg / 2.0) * np.cos(np.radians(normal_deg))
+    gap = REQUIRED_MM + (2 if mounts in BOTH_MOVE else 1) * nearing_mm + spare_mm
+    return nearing(mounts, float(gap), cell_deg, normal_deg)
 
 
 def one_cell(setup: Setup, cell_deg: float) -> Proof:
@@ -80,17 +103,6 @@ def true_slacks(setup: Setup, cell_deg: float) -> tuple[float, float]:
     return exact.at(angles[2], angles[2]).slack_mm, min(exact.at(g, c).slack_mm for g in angles for c in angles)
 
 
-def in_motion(mounts: str) -> int:
-    """Return how many of the two blocks move."""
-    return 2 if mounts in {"gantry and turntable", "gantry and tilted", "gantry and eccentric"} else 1
-
-
-def gap_to_spare(mounts: str, cell_deg: float, spare_mm: float, normal_deg: float = 0.0) -> float:
-    """Return the gap at 0 that leaves so much slack where the blocks are nearest; the arcs are straight enough."""
-    nearing_mm = ARM_MM * np.radians(cell_deg) * np.cos(np.radians(normal_deg))
-    return float(REQUIRED_MM + in_motion(mounts) * nearing_mm + spare_mm)
-
-
 def smaller_reach(pieces: object, parts: object, axis: int | None) -> Hulls:
     packed = packed_hulls(pieces, parts, axis)  # type: ignore[arg-type]
     return packed._replace(reach=packed.reach * 0.95)
@@ -98,10 +110,10 @@ def smaller_reach(pieces: object, parts: object, axis: int | None) -> Hulls:
 
 @pytest.mark.parametrize("mounts", MOUNTS)
 def test_the_bound_of_a_cell_is_attained_within_a_hundredth(mounts: str) -> None:
-    setup = nearing(mounts, gap_to_spare(mounts, 1.0, spare_mm=1.0), 1.0)
+    setup = leaving(mounts, 1.0, cell_deg=1.0)
     middle, least = true_slacks(setup, 1.0)
     bound = float(one_cell(setup, 1.0).slack_mm[0, 0])
-    assert 0.0 < least < 1.2
+    assert 0.9 < least < 1.1
     assert bound <= least
     assert middle - least >= 0.99 * (middle - bound)
 
@@ -110,46 +122,46 @@ def test_the_bound_of_a_cell_is_attained_within_a_hundredth(mounts: str) -> None
 def test_a_reach_that_is_a_twentieth_too_small_proves_what_is_false(
     mounts: str, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    setup = nearing(mounts, gap_to_spare(mounts, 1.0, spare_mm=-0.3), 1.0)
+    setup = leaving(mounts, -0.2, cell_deg=1.0)
     _, least = true_slacks(setup, 1.0)
     assert least < -0.1
     assert np.isnan(one_cell(setup, 1.0).slack_mm[0, 0])
     monkeypatch.setattr(planes, "packed_hulls", smaller_reach)
-    assert one_cell(setup, 1.0).slack_mm[0, 0] > least
+    assert one_cell(setup, 1.0).slack_mm[0, 0] >= 0.0
 
 
-SLANTING = ["gantry", "turntable", "gantry and turntable", "gantry and eccentric"]
-# Cells small enough that the curve of the arcs counts for little, and a block whose corners are all but one point.
-SLANT_CELL_DEG = 0.2
-SLANT_DEG = 60.0
-POINT_MM = 0.5
+# Faces that slant, so that only half of each motion brings them nearer: not the reaches decide then, but the rates
+# along the normal. The cell is small enough that the curve of the arcs counts for little.
+SLANTING = ["gantry", "turntable", "gantry and turntable", "gantry and tilted", "gantry and eccentric"]
+SLANT_CELL_DEG = 0.1
+SHORT_MM = -0.004
 
 
 def slanting(mounts: str, spare_mm: float) -> Setup:
-    """Return blocks whose faces slant, so that only half of each motion brings them nearer."""
-    gap = gap_to_spare(mounts, SLANT_CELL_DEG, spare_mm, SLANT_DEG)
-    return nearing(mounts, gap, SLANT_CELL_DEG, SLANT_DEG, POINT_MM)
+    """Return blocks whose faces slant by 60 deg."""
+    return leaving(mounts, spare_mm, SLANT_CELL_DEG, normal_deg=60.0)
 
 
 @pytest.mark.parametrize("mounts", SLANTING)
 def test_the_bound_along_the_normal_is_attained_within_a_hundredth(mounts: str) -> None:
-    setup = slanting(mounts, spare_mm=0.2)
+    setup = slanting(mounts, spare_mm=0.1)
     middle, least = true_slacks(setup, SLANT_CELL_DEG)
     bound = float(one_cell(setup, SLANT_CELL_DEG).slack_mm[0, 0])
+    assert 0.09 < least < 0.11
     assert bound <= least
     assert middle - least >= 0.99 * (middle - bound)
 
 
 def test_rates_that_are_a_twentieth_too_small_prove_what_is_false() -> None:
     for mounts in SLANTING:
-        setup = slanting(mounts, spare_mm=-0.02)
+        setup = slanting(mounts, spare_mm=SHORT_MM)
         _, least = true_slacks(setup, SLANT_CELL_DEG)
         assert least < 0.0
         assert np.isnan(one_cell(setup, SLANT_CELL_DEG).slack_mm[0, 0])
     # Compiled code cannot be changed; the same kernels uncompiled can.
     environment = {**os.environ, "NUMBA_DISABLE_JIT": "1"}
     command = [sys.executable, "-m", "tests.geometry.uncompiled_proof"]
-    ended = subprocess.run(command, env=environment, capture_output=True, text=True, check=True)
+    ended = subprocess.run(command, env=environment, cwd=ROOT, capture_output=True, text=True, check=True)
     found = json.loads(ended.stdout)
     assert found["proved"] == [False] * len(SLANTING)
     assert found["proved with smaller rates"] == [True] * len(SLANTING)

@@ -1,6 +1,6 @@
 """What the kernels prove uncompiled, and what they would prove if parts of them were wrong.
 
-`NUMBA_DISABLE_JIT=1 python -m tests.geometry.uncompiled_proof` prints it as JSON; only uncompiled can parts be replaced.
+`NUMBA_DISABLE_JIT=1 python -m tests.geometry.uncompiled_proof` prints it as JSON. Compiled, no part can be replaced.
 """
 
 import json
@@ -12,10 +12,9 @@ import numpy as np
 from geometry import kernel
 from geometry.scene import build_scene
 from geometry.sweep import sweep
-from tests.geometry.test_proof_bounds import SLANT_CELL_DEG, SLANTING, one_cell, slanting
+from tests.geometry.test_proof_bounds import SHORT_MM, SLANT_CELL_DEG, SLANTING, one_cell, slanting
 
-SHORT_MM = -0.02
-ROOM_MM = 0.2
+ROOM_MM = 0.1
 
 _right_rates = kernel._set_rates
 

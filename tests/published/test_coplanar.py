@@ -98,9 +98,7 @@ def test_the_least_clearance_of_a_turn_is_where_the_closed_form_has_it() -> None
 
 
 def test_a_round_head_seen_from_its_side_is_near_within_its_excess() -> None:
-    # The head's barrel, radius R about its axis, beside a table that is turned under it: at gantry 0, with the table
-    # raised beyond the face, the table's edge line x = -265 is 265 from the axis; a head shifted by 900 leaves
-    # 900 - R - 265.
+    # An upright barrel of radius R, its axis at X = 900, beside a table whose edge lies at X = 265: 900 - R - 265.
     radius = 420.0
     barrel = Cylinder(radius, (900.0, 0.0, -400.0), (900.0, 0.0, 400.0))
     found = clearance_mm(set_up(head(barrel)), 0.0)
@@ -117,8 +115,7 @@ def test_a_table_in_a_bore(gantry_deg: float) -> None:
 
 
 def test_the_couch_turn_brings_the_corner_out() -> None:
-    # The table's corner at (265, 600) is 655.9 from the couch axis; a wall at X = 800 is 800 - x away, x the greatest
-    # of 265 cos c + 600 sin c. (Plane geometry.)
+    # A wall at X = 800 is 800 - x away, x the greatest of the turned corners'. (Plane geometry.)
     wall = Part("wall", Mount.FIXED, Box((100.0, 4000.0, 4000.0), (850.0, 0.0, 0.0)))
     setup = set_up(wall)
     # The isocentre lies 20 from the head end of the patient's box, whose head side is at the head end of the table.

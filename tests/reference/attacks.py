@@ -63,8 +63,9 @@ def attack(
     outcome: Outcome,
     by_library: int = 0,
     threads: int = 1,
+    errors: float = 1.0,
 ) -> None:
-    """Attack the proof of one set-up with about so many readings."""
+    """Attack the proof of one set-up with about so many readings, whose errors are `errors` times the tolerance."""
     scene = build_scene(setup)
     proof = prove(scene, *proof_steps(setup.room, options))
     tolerances = tolerances_of(setup.room, options)
@@ -73,7 +74,7 @@ def attack(
     before = outcome.readings
     library = LeastDistances(setup) if by_library else None
 
-    for kind, angles, promised in _readings(rng, scene, proof, tolerances, readings):
+    for kind, angles, promised in _readings(rng, scene, proof, tolerances, readings, errors):
         clearance, slack = exact.at(angles[:, 0], angles[:, 1])
         if promised is None:
             outcome.judge(kind, setup, options, angles, slack)
@@ -89,7 +90,7 @@ def attack(
 
 
 def _readings(
-    rng: Generator, scene: Scene, proof: Proof, tolerances: Tolerances, count: int
+    rng: Generator, scene: Scene, proof: Proof, tolerances: Tolerances, count: int, errors: float
 ) -> Iterator[tuple[str, Array, Array | None]]:
     """Yield (kind, true angles (n, 2), promised (n, 2) or None): promised clearance and slack, else a slack of 0."""
     share = count // 4
@@ -100,7 +101,7 @@ def _readings(
     ]
     for kind, (readings, promised) in found:
         if len(readings):
-            yield kind, readings + _errors(rng, tolerances, len(readings)), promised
+            yield kind, readings + errors * _errors(rng, tolerances, len(readings)), promised
     points, promised = _in_cells(rng, proof, share)
     if len(points):
         yield "cell", points, promised

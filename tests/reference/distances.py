@@ -5,7 +5,8 @@ too, since `fcl.Box` against `fcl.Box` is wrong when turned.
 """
 
 from dataclasses import dataclass
-from typing import Any, Protocol, get_args
+from functools import lru_cache
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -125,26 +126,21 @@ class LeastDistances:
         self.by = by or library()
         self.parts = standing_parts(setup)
         self.part_of = [part for part in self.parts for _ in part.pieces]
-        pieces = [piece for part in self.parts for piece in part.pieces]
-        self.first = np.cumsum([0, *(len(piece) for piece in pieces)])[:-1]
-        self.points = np.vstack(pieces)
-        self.hulls = [self.by.hull(piece) for piece in pieces]
-        carriers = [(part.carrier, len(piece)) for part in self.parts for piece in part.pieces]
-        self.carried = {
-            carrier: np.concatenate([np.full(count, one == carrier) for one, count in carriers])
-            for carrier in get_args(Carrier)
-        }
+        self.pieces = [piece for part in self.parts for piece in part.pieces]
+        self.hulls = [self.by.hull(piece) for piece in self.pieces]
         self.pairs = self._pairs(setup)
+        self.boxes_at = lru_cache(maxsize=512)(self._boxes_at)
 
     def at(self, gantry_deg: float, couch_deg: float) -> Found:
         """Return clearance and slack at a pair of angles; infinite where no pair is asked."""
         turned = turns(gantry_deg, couch_deg)
-        points = np.empty_like(self.points)
-        for carrier, rows in self.carried.items():
-            points[rows] = self.points[rows] @ turned[carrier].as_matrix().T
-        low, high = np.minimum.reduceat(points, self.first), np.maximum.reduceat(points, self.first)
+        low, high = np.empty((2, len(self.pieces), 3))
+        for carrier, angle_deg in (("gantry", gantry_deg), ("couch", couch_deg), ("nothing", 0.0)):
+            which, low_of, high_of = self.boxes_at(carrier, angle_deg)
+            low[which], high[which] = low_of, high_of
         i, j, required = self.pairs
-        between_boxes = np.linalg.norm(np.maximum(0.0, np.maximum(low[i] - high[j], low[j] - high[i])), axis=1)
+        gaps = np.maximum(np.maximum(low[i] - high[j], low[j] - high[i]), 0.0)
+        between_boxes = np.sqrt(np.einsum("ij,ij->i", gaps, gaps))
         poses = {carrier: self.by.turned(turn) for carrier, turn in turned.items()}
         clearance, slack, nearest = np.inf, np.inf, None
         for k in np.argsort(between_boxes):
@@ -161,6 +157,14 @@ class LeastDistances:
             if distance < clearance:
                 clearance, nearest = distance, (one.label, other.label)
         return Found(clearance, slack, nearest)
+
+    def _boxes_at(self, carrier: Carrier, angle_deg: float) -> tuple[list[int], Array, Array]:
+        """Return the pieces that ride on a carrier, and the boxes about them when it is turned."""
+        turn = turns(angle_deg, angle_deg)[carrier]
+        which = [k for k, part in enumerate(self.part_of) if part.carrier == carrier]
+        points = [turn.apply(self.pieces[k]) for k in which]
+        boxes = np.array([[p.min(axis=0), p.max(axis=0)] for p in points]).reshape(-1, 2, 3)
+        return which, boxes[:, 0], boxes[:, 1]
 
     def _pairs(self, setup: Setup) -> tuple[NDArray[np.int64], NDArray[np.int64], Array]:
         """Return the pieces of each pair that is asked, and what is required of it, mm."""
