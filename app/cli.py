@@ -135,10 +135,11 @@ def _map(chosen: argparse.Namespace) -> int:
         gantry_tolerance_deg=chosen.gantry_tolerance,
         couch_tolerance_deg=chosen.couch_tolerance,
     )
-    start = time.monotonic()
     with TerminalProgress(quiet=chosen.quiet) as progress:
         prepare_kernels(progress)
+        start = time.monotonic()
         assessment = _named(chosen.setup, lambda: assess(setup, options, progress))
+        seconds = time.monotonic() - start
         provenance = provenance_of(assessment.scene, options, datetime.datetime.now().astimezone().date())
         for path in chosen.out:
             progress.report(1.0, f"writing {path.name}")
@@ -147,7 +148,7 @@ def _map(chosen: argparse.Namespace) -> int:
             progress.report(1.0, f"writing {chosen.grid.name}")
             write_grid(assessment, chosen.grid)
     if not chosen.quiet:
-        _summary(assessment, time.monotonic() - start)
+        _summary(assessment, seconds)
         for path in (*chosen.out, *([chosen.grid] if chosen.grid else [])):
             print(f"Wrote {path}")
     return DONE

@@ -15,6 +15,8 @@ _NO_VOLUME_MM3: Final = 1e-6
 # Planes of a simpler hull stand off by this, mm, so that rounding in their corners cannot bring them inside.
 _ROUNDING_MM: Final = 1e-6
 _FEW_VERTICES: Final = 24
+# Cosine of the angle, about 18 deg, within which planes of a simpler hull are added one after the other.
+_SAME_DIRECTION: Final = 0.95
 # Vertices among which the point of a hull that is nearest to another is sought.
 _NEAREST: Final = 50
 
@@ -79,11 +81,23 @@ def simpler_hull(hull: Hull, tolerance_mm: float) -> Hull:
         worst = beyond.max(axis=1)
         if worst.max() <= tolerance_mm:
             break
-        # The worst half of the corners at a time: one by one takes long, all at once adds more planes than needed.
-        far = worst >= max(tolerance_mm, worst.max() / 2.0)
-        bounded.add_halfspaces(_off(planes[np.unique(beyond[far].argmax(axis=1))]))
+        bounded.add_halfspaces(_off(planes[_apart(planes, beyond, worst, tolerance_mm)]))
     simpler = hull_of(np.unique(corners, axis=0))
     return simpler if len(simpler.vertices) < 0.8 * len(hull.vertices) else hull
+
+
+def _apart(planes: Array, beyond: Array, worst: Array, tolerance_mm: float) -> list[int]:
+    """Return planes that the worst corners lie beyond, all of different directions.
+
+    One plane at a time would take long, and all at once would be more planes than needed: neighbouring corners are
+    often cut off together.
+    """
+    chosen: list[int] = []
+    for corner in np.argsort(-worst)[: np.count_nonzero(worst > max(tolerance_mm, worst.max() / 2.0))]:
+        plane = int(beyond[corner].argmax())
+        if np.all(planes[chosen, :3] @ planes[plane, :3] < _SAME_DIRECTION):
+            chosen.append(plane)
+    return chosen
 
 
 def distance_beyond(hull: Hull, points: Array) -> float:
