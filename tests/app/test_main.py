@@ -6,7 +6,7 @@ from types import ModuleType
 
 import pytest
 
-from app.__main__ import INTERRUPTED, main
+from app.__main__ import BROKEN, INTERRUPTED, main
 
 Run = Callable[[Sequence[str]], int]
 
@@ -52,6 +52,22 @@ def test_an_interrupt_ends_without_a_traceback(
     command_line(run)
     assert main([]) == INTERRUPTED
     assert capsys.readouterr().err == "wideberth: stopped\n"
+
+
+def test_a_fault_of_the_program_is_told_without_a_traceback_unless_asked_for(
+    command_line: Callable[[Run], None], capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def run(_arguments: Sequence[str]) -> int:
+        raise RuntimeError("odd")
+
+    command_line(run)
+    assert main([]) == BROKEN
+    told = capsys.readouterr().err
+    assert "odd" in told
+    assert "Traceback" not in told
+    monkeypatch.setenv("WIDEBERTH_TRACEBACK", "1")
+    with pytest.raises(RuntimeError, match="odd"):
+        main([])
 
 
 def test_the_way_in_imports_nothing_that_is_slow_or_reads_the_cache_too_early() -> None:
