@@ -7,9 +7,9 @@ import pytest
 from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
-from geometry.kernel import APART, CONTACT, RESOLUTION_MM
+from geometry.kernel import APART, CONTACT, FAILED, RESOLUTION_MM
 from tests.reference.features import separation_mm
-from tests.reference.kernel_calls import CUBE, ask, ask_pair, packed, random_piece, shifted
+from tests.reference.kernel_calls import CUBE, Answers, ask, ask_pair, packed, random_piece, shifted
 
 Array = NDArray[np.float64]
 Vector = tuple[float, float, float]
@@ -119,3 +119,38 @@ def test_a_shift_by_less_than_the_depth_never_parts_them() -> None:
         for direction in (*rng.normal(size=(6, 3)), other.mean(axis=0) - one.mean(axis=0)):
             shift = direction / np.linalg.norm(direction) * depth * 0.9999
             assert ask_pair(one, other + shift).status[0] == CONTACT
+
+
+def brought_near(seed: int, count: int, least_mm: float, most_mm: float) -> tuple[Array, Answers]:
+    """Bring random pieces to a known distance along the line of their nearest points; return it and the answers."""
+    rng = np.random.default_rng(seed)
+    a, b = ([shifted(rng, random_piece(rng), 300.0) for _ in range(count)] for _ in range(2))
+    each, still = np.arange(count, dtype=np.int32), np.tile(np.eye(3), (count, 1, 1))
+    before = ask(packed(a, 1), packed(b, 2), each, each, still)
+    wanted = np.exp(rng.uniform(np.log(least_mm), np.log(most_mm), count))
+    moved = []
+    for piece, (near_a, near_b), distance in zip(b, before.points, wanted, strict=True):
+        matrix = np.eye(4)
+        line = near_a - near_b
+        matrix[:3, 3] = line * (1.0 - distance / np.linalg.norm(line)) if np.any(line) else 0.0
+        moved.append(piece.placed(matrix))
+    after = ask(packed(a, 1), packed(moved, 2), each, each, still)
+    apart = before.status == APART
+    return wanted[apart], Answers(**{name: values[apart] for name, values in vars(after).items()})
+
+
+def test_pieces_some_micrometres_apart() -> None:
+    distances, answers = brought_near(21, 2000, 5e-3, 1.0)
+    assert np.all(answers.status == APART)
+    assert answers.lower == pytest.approx(distances, abs=1e-6)
+
+
+def test_pieces_all_but_touching_are_unsettled_rather_than_wrong() -> None:
+    distances, answers = brought_near(22, 2000, 1e-6, 5e-3)
+    settled = answers.status == APART
+    assert np.mean(settled) > 0.9
+    assert np.all(answers.status[~settled] == FAILED)
+    assert answers.lower[settled] == pytest.approx(distances[settled], abs=1e-6)
+    # What is certified holds whatever came of the query.
+    assert np.all(answers.lower <= distances + 1e-9)
+    assert np.all(answers.upper >= distances - 1e-9)

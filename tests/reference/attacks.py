@@ -1,8 +1,8 @@
 """Attacks on the proof: random readings inside what is permitted, moved by random errors within the tolerance.
 
-Readings lie in intervals, spans and the permitted region, most of them where it hurts: at ends, borders, corners. At
-the true angles that they lead to the exact slack must not be negative. Points of proved cells must keep the bounds
-that the cells state.
+Readings lie in intervals, spans, the permitted region, rectangles and on paths, most of them where it hurts: at ends,
+borders, corners. At the true angles that they lead to the exact slack must not be negative. Points of proved cells
+must keep the bounds that the cells state.
 """
 
 from collections.abc import Iterator
@@ -20,6 +20,7 @@ from geometry.setup import Setup
 from geometry.spans import Tolerances, permitted_region, permitted_runs, spans_at
 from tests.reference.distances import LeastDistances
 from tests.reference.exact import Exact
+from tests.reference.path_attacks import in_paths, in_rectangles
 from tests.reference.rooms import random_setup
 
 Array = NDArray[np.float64]
@@ -93,11 +94,13 @@ def _readings(
     rng: Generator, scene: Scene, proof: Proof, tolerances: Tolerances, count: int, errors: float
 ) -> Iterator[tuple[str, Array, Array | None]]:
     """Yield (kind, true angles (n, 2), promised (n, 2) or None): promised clearance and slack, else a slack of 0."""
-    share = count // 4
+    share = count // 6
     found = [
         ("interval", _in_intervals(rng, proof, tolerances, share)),
         ("span", _in_spans(rng, scene, proof, tolerances, share)),
         ("region", _in_region(rng, permitted_region(proof, tolerances), share)),
+        ("path", in_paths(rng, scene, proof, tolerances, share)),
+        ("rectangle", in_rectangles(rng, proof, tolerances, share)),
     ]
     for kind, (readings, promised) in found:
         if len(readings):
