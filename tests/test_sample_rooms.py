@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 
 from app.files.room_file import read_room
 from app.files.setup_file import read_setup
+from geometry.errors import GeometryError
 from geometry.machine import Axis, Room
 from geometry.scene import Scene, ScenePart, Side, build_scene
 from geometry.setup import Isocentre
@@ -262,7 +263,12 @@ def permitted(scene: Scene, gantry_step_deg: float, couch_deg: Array) -> NDArray
 def test_gantry_keeps_clear_of_the_room(name: str) -> None:
     scene = scene_of(name)
     machines = replace(scene, parts=tuple(part for part in scene.parts if part.side is not Side.COUCH))
-    assert permitted(machines, 5.0, np.zeros(1)).all()
+    if name.startswith("closed_bore"):
+        # All that turns is joined to the covers that it turns behind.
+        with pytest.raises(GeometryError, match="no part to keep clear of"):
+            permitted(machines, 5.0, np.zeros(1))
+    else:
+        assert permitted(machines, 5.0, np.zeros(1)).all()
 
 
 @pytest.mark.parametrize(
