@@ -4,11 +4,14 @@ Everything between the samples rests on it, so it is attacked: random pieces, tu
 deg, and pairs of angles chosen so that the bound is nearly reached.
 """
 
+import itertools
+
 import numpy as np
 import pytest
 from numpy.typing import NDArray
 
 from geometry.kernel import APART, CONTACT, FAILED, Hulls, fall
+from geometry.plane_kernel import _rise
 from tests.reference.kernel_calls import Answers, ask, packed, random_piece, relative_turns, shifted
 
 Array = NDArray[np.float64]
@@ -93,6 +96,25 @@ def test_the_fall_of_a_bound_is_never_less_than_the_fall_of_the_distance(apart_m
             ]
         )
         assert np.all(queries.before.lower - falls <= np.maximum(after.upper, 0.0))
+
+
+def test_the_rise_of_a_distance_is_never_less_than_the_truth() -> None:
+    """An upper bound that is too small would drop a pair that matters."""
+    slid = 0
+    for apart_mm, scale_rad in itertools.product((3.0, 30.0, 300.0), (1e-4, 1e-2, 0.3)):
+        queries = Queries(23, apart_mm)
+        a, b, before = queries.a, queries.b, queries.before
+        by_gantry, by_couch, after = queries.turned_on(scale_rad)
+        falls = before.lower - queries.bound(by_gantry, by_couch)
+        chords = 2.0 * np.sin(np.abs([by_gantry, by_couch]) / 2.0)
+        motion = a.reach[queries.i] * chords[0] + b.reach[queries.j] * chords[1]
+        apart, touching = before.status == APART, before.status == CONTACT
+        rises = np.array([_rise(*values) for values in zip(before.lower, before.upper, falls, motion, strict=True)])
+        assert np.all(after.lower[apart] <= np.minimum(before.upper + motion, rises)[apart] + 1e-9)
+        assert np.all(after.lower[touching] <= np.maximum(before.upper + motion, 0.0)[touching] + 1e-9)
+        # Motion across the line between the nearest points counts too.
+        slid += np.count_nonzero(after.lower[apart] > (before.upper + falls)[apart] + 1e-9)
+    assert slid > 0
 
 
 def farthest_moves(body: Hulls, axis: int, angle_rad: float) -> Array:

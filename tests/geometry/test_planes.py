@@ -104,6 +104,22 @@ def test_planes_hold_every_pair_of_pieces_once_with_what_it_requires(seed: int) 
     assert len({required for _, _, required in found}) == 2
 
 
+@pytest.mark.parametrize("seed", range(3))
+def test_groups_of_pairs_are_held_by_their_spheres(seed: int) -> None:
+    for plane in planes_of(build_scene(random_setup(np.random.default_rng(550 + seed)))):
+        groups, pairs, b = plane.pairs.groups, plane.pairs, plane.b
+        assert groups.first[0] == 0
+        assert groups.first[-1] == len(pairs.i)
+        assert np.all(np.diff(groups.first) > 0)
+        for g, (start, stop) in enumerate(itertools.pairwise(groups.first)):
+            assert len(set(pairs.i[start:stop])) == 1
+            assert groups.required[g] == pairs.required[start:stop].max()
+            for piece in pairs.j[start:stop]:
+                vertices = b.vertices[b.first[piece] : b.first[piece + 1]]
+                assert np.linalg.norm(vertices - groups.centres[g], axis=1).max() <= groups.radii[g] + 1e-9
+                assert b.reach[piece] <= groups.reach[g]
+
+
 def bodies_of(plane: Plane) -> set[str]:
     return {"gantry" * plane.with_gantry, "couch" * plane.with_couch} - {""}
 

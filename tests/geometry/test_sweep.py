@@ -54,6 +54,11 @@ def assert_equals_reference(setup: Setup, found: ClearanceMap) -> tuple[int, int
     return touching, found.clearance_mm.size - touching
 
 
+# Angles that share a block of the sweep, lopsided: most within a twentieth of a degree, the others far off.
+CLUSTERS = np.concatenate(
+    [start + np.array([*np.arange(8) / 100.0, 20.0, 40.0]) for start in (-180, -100, -30, 50, 130)]
+)
+
 # Whole turns in wide steps, edges in narrow ones, ends of the travel, angles of no pattern, one angle of either.
 GRIDS: list[tuple[str, Array, Array]] = [
     ("5 deg steps", grid_deg(-60.0, 62.5, 5.0), grid_deg(-20.0, 20.0, 10.0)),
@@ -61,6 +66,7 @@ GRIDS: list[tuple[str, Array, Array]] = [
     ("0.5 deg steps", grid_deg(100.0, 106.0, 0.5), grid_deg(-90.0, -87.0, 0.5)),
     ("whole turn", grid_deg(-185.0, 185.0, 20.0), grid_deg(-90.0, 90.0, 30.0)),
     ("no pattern", np.array([-180.0, -179.99, -3.0, 0.0, 1e-9, 40.7, 185.0]), np.array([-90.0, -0.1, 0.0, 77.7, 90.0])),
+    ("clusters with gaps, their middles at one end", CLUSTERS, CLUSTERS[10:-10] / 2.0),
     ("one gantry angle", np.array([33.3]), grid_deg(-90.0, 90.0, 3.0)),
     ("one couch angle", grid_deg(-185.0, 185.0, 6.0), np.array([-12.0])),
 ]
