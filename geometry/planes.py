@@ -4,6 +4,7 @@ How two bodies stand to each other depends on the gantry angle, the couch angle,
 """
 
 from dataclasses import dataclass
+from functools import lru_cache
 from itertools import pairwise
 
 import numpy as np
@@ -39,8 +40,12 @@ class Plane:
     with_couch: bool
 
 
+@lru_cache(maxsize=4)
 def planes_of(scene: Scene) -> tuple[Plane, ...]:
-    """Return the planes that have pairs to check. GeometryError where there are none at all."""
+    """Return the planes that have pairs to check. GeometryError where there are none at all.
+
+    Remembered: a scene never changes, and sweep, proof and each path ask for the same.
+    """
     gantry = _members(scene, Motion.GANTRY)
     turntable = _members(scene, Motion.TURNTABLE)
     still = _members(scene, Motion.STILL)

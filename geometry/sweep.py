@@ -8,10 +8,11 @@ from numpy.typing import NDArray
 
 from geometry.frames import cos_sin
 from geometry.kernel import Memory
-from geometry.plane_kernel import Angles, Field, Lists, sweep_tiles
+from geometry.plane_kernel import Lists
 from geometry.planes import Plane, planes_of
 from geometry.progress import Progress, Silent
 from geometry.scene import Scene
+from geometry.sweep_kernel import Angles, Field, sweep_tiles
 from geometry.tasks import Tiles, run_tiles
 
 Array = NDArray[np.float64]

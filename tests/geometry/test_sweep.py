@@ -9,10 +9,10 @@ import pytest
 from numpy.typing import NDArray
 
 from geometry.errors import Cancelled
-from geometry.plane_kernel import sweep_tiles
 from geometry.scene import Scene, build_scene
 from geometry.setup import Setup
 from geometry.sweep import ClearanceMap, grid_deg, sweep
+from geometry.sweep_kernel import sweep_tiles
 from tests.reference.distances import TOLERANCE_MM, LeastDistances
 from tests.reference.features import distance_to_hull_mm
 from tests.reference.poses import Standing, standing_parts
