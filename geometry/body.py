@@ -8,7 +8,7 @@ are our own, no source.
 import math
 from dataclasses import dataclass
 from functools import lru_cache
-from typing import Final, Literal
+from typing import Final, Literal, get_args
 
 import numpy as np
 from numpy.typing import NDArray
@@ -64,6 +64,14 @@ class Body:
 
     def __post_init__(self) -> None:
         """Check every value."""
+        for name, value, words in (
+            ("build", self.build, get_args(Build)),
+            ("arm_left", self.arm_left, get_args(ArmPosture)),
+            ("arm_right", self.arm_right, get_args(ArmPosture)),
+            ("legs", self.legs, get_args(LegPosture)),
+        ):
+            if value not in words:
+                raise GeometryError(f"{name} = {value!r}; allowed: {', '.join(map(repr, words))}")
         sizes_of(self.stature_mm, self.mass_kg, self.build, self.sizes)
         if not 0.0 <= self.slope_deg <= 45.0:
             raise GeometryError(f"slope_deg = {self.slope_deg:g} is outside the range 0 to 45")

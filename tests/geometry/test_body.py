@@ -145,6 +145,9 @@ def test_a_measured_size_replaces_the_mean() -> None:
         ({"stature_mm": 1700.0, "sizes": (("chest_dept_mm", 300.0),)}, "chest_depth_mm"),
         ({"stature_mm": 1700.0, "sizes": (("chest_depth_mm", 5000.0),)}, "chest_depth_mm"),
         ({"stature_mm": 1700.0, "slope_deg": 60.0}, "slope_deg"),
+        ({"stature_mm": 1700.0, "arm_left": "over the head"}, "arm_left"),
+        ({"stature_mm": 1700.0, "legs": "crossed"}, "legs"),
+        ({"stature_mm": 1700.0, "build": "child"}, "build"),
         ({"stature_mm": 1700.0, "slope_deg": 10.0, "prone": True}, "prone"),
     ],
 )
