@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from geometry.body import Body, body_landmarks, body_parts
 from geometry.decompose import revolved
 from geometry.errors import GeometryError
-from geometry.frames import R_dicom_tabletop, R_gantry_collimator, moved, transform
+from geometry.frames import R_dicom_tabletop, R_gantry_collimator, moved, transform, unwrapped_deg
 from geometry.kinematics import CouchPose, couch_pose
 from geometry.landmarks import Landmark
 from geometry.machine import EVERY_STAGE, Axis, Mount, Part, PartKind, Room, Stage
@@ -222,7 +222,7 @@ def _isocentre_patient(setup: Setup) -> Array:
 
 
 def _beyond_travel(room: Room, setup: Setup, couch: CouchPose) -> tuple[str, ...]:
-    """Name every stage that would have to leave its travel, with the excess."""
+    """Name every stage, and the collimator, that would have to leave its travel, with the excess."""
     stages: tuple[tuple[str, Axis, float, str], ...] = (
         ("eccentric", room.couch.eccentric, setup.eccentric_deg, "deg"),
         ("lateral", room.couch.lateral, float(couch.T_mm[0]), "mm"),
@@ -240,6 +240,10 @@ def _beyond_travel(room: Room, setup: Setup, couch: CouchPose) -> tuple[str, ...
                 f"couch {name} = {value:.1f} {unit} is {excess:.1f} {unit} outside its travel "
                 f"{axis.low:g} to {axis.high:g}"
             )
+    turning = (room.collimator.low, room.collimator.high)
+    if setup.collimator_deg is not None and not unwrapped_deg(setup.collimator_deg, turning):
+        wanted = f"collimator = {setup.collimator_deg:g} deg"
+        found.append(f"{wanted} is outside its travel {turning[0]:g} to {turning[1]:g}")
     return tuple(found)
 
 

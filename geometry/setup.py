@@ -33,9 +33,8 @@ class OnTable:
     """Where the patient lies, as a tape measure tells it.
 
     `from_head_end_mm`: along the table from its head end to the patient's nearest point (negative: overhangs).
-    `lateral_mm`: table-top X of the patient's mid-line (origin of the patient axes). `height_mm`: gap between the
-    table's surface and the patient's lowest point (mattress, board). `slope_deg`: the patient lies on a slope, head
-    up for positive values, turned about the table-top X line through the patient's hips' lowest point.
+    `lateral_mm`: table-top X of the patient axes' origin, the mid-line of a patient on back or front. `height_mm`: gap
+    between the table's surface and the patient's lowest point (mattress, board).
     """
 
     from_head_end_mm: float

@@ -219,6 +219,14 @@ def test_every_stage_beyond_its_travel_is_named() -> None:
     assert [words.split(" =")[0] for words in found] == ["couch lateral", "couch pitch", "couch roll"]
 
 
+def test_a_collimator_beyond_its_travel_is_named() -> None:
+    setup = plain(collimator_deg=170.0)
+    narrow = replace(setup, room=replace(setup.room, collimator=Axis(-165.0, 165.0)))
+    assert [words.split(" =")[0] for words in build_scene(narrow).no_travel] == ["collimator"]
+    assert build_scene(replace(narrow, collimator_deg=200.0)).no_travel == ()  # 200 is -160
+    assert build_scene(replace(narrow, collimator_deg=None)).no_travel == ()
+
+
 def test_the_very_end_of_a_travel_belongs_to_it() -> None:
     # T_x = -(lateral + 5): at lateral 995 the couch stands at its very end.
     assert build_scene(plain(on_table=OnTable(100.0, 995.0, 30.0), pitch_deg=3.0, roll_deg=0.0)).no_travel == ()
