@@ -20,12 +20,15 @@ def choose_kernel_cache() -> None:
     """Tell numba where to keep what it compiles. To be called before numba is first imported.
 
     Beside the source, where that can be written; else in the user's cache folder; else in a folder that lasts as long
-    as the process. Numba alone would refuse to start where neither of the first two can be written. A choice
-    that the user made with NUMBA_CACHE_DIR stands.
+    as the process. Numba alone would refuse to start where neither of the first two can be written. Where the user
+    named a folder with NUMBA_CACHE_DIR it is in there. Calling it again changes nothing.
     """
-    if os.environ.get(_VARIABLE):
-        return
     name = f"kernels-{kernels_digest()}"
+    of_choice = os.environ.get(_VARIABLE)
+    if of_choice:
+        if Path(of_choice).name != name:
+            os.environ[_VARIABLE] = str(Path(of_choice) / name)
+        return
     beside_source = Path(geometry.__file__).parent / "__pycache__" / name
     of_user = platformdirs.user_cache_path("wideberth", appauthor=False) / name
     os.environ[_VARIABLE] = str(first_writable([beside_source, of_user]) or _of_process())

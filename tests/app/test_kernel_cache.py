@@ -42,11 +42,14 @@ def test_the_users_folder_is_next(source: Path, tmp_path: Path) -> None:
     assert Path(os.environ[VARIABLE]).parent == tmp_path / "user" / "wideberth"
 
 
-def test_a_choice_made_outside_stands(source: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_a_folder_named_outside_holds_one_for_each_state_of_the_sources(
+    source: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
     source.write_bytes(b"")
     monkeypatch.setenv(VARIABLE, "elsewhere")
-    choose_kernel_cache()
-    assert os.environ[VARIABLE] == "elsewhere"
+    for _ in range(2):
+        choose_kernel_cache()
+        assert Path(os.environ[VARIABLE]) == Path("elsewhere") / f"kernels-{kernels_digest()}"
 
 
 def test_the_last_resort_goes_with_the_process(tmp_path: Path) -> None:
