@@ -51,12 +51,18 @@ def run_tiles(
     if workers == 1:
         for done, hand in enumerate(hands):
             run(hand)
-            progress.report((done + 1) / len(hands), message)
+            _report(progress, (done + 1) / len(hands), message)
     else:
         with ThreadPoolExecutor(workers) as pool:
             for done, _ in enumerate(pool.map(run, hands)):
-                progress.report((done + 1) / len(hands), message)
+                _report(progress, (done + 1) / len(hands), message)
     stop_if_cancelled(progress)
+
+
+def _report(progress: Progress, fraction: float, message: str) -> None:
+    # What was stopped is not done, though the calls that are left return at once.
+    if not progress.cancelled():
+        progress.report(fraction, message)
 
 
 def scratch_for(pairs: Pairs) -> tuple[Memory, Lists]:
