@@ -11,6 +11,7 @@ from geometry.kernel import WINDS, Hulls
 from geometry.pieces import ConvexPiece
 
 Array = NDArray[np.float64]
+Indices = NDArray[np.int64]
 
 
 def packed_hulls(pieces: Sequence[ConvexPiece], parts: Sequence[int], axis: int | None) -> Hulls:
@@ -19,33 +20,43 @@ def packed_hulls(pieces: Sequence[ConvexPiece], parts: Sequence[int], axis: int 
     `parts` gives each piece's part number. `axis` is the coordinate axis about which the body turns (1 for the
     gantry's Y, 2 for the couch's Z), None for a body that stands still. GeometryError for what is not a number.
     """
-    if not all(np.isfinite(piece.vertices).all() for piece in pieces):
+    vertices = np.concatenate([np.empty((0, 3)), *(piece.vertices for piece in pieces)])
+    if not np.isfinite(vertices).all():
         raise GeometryError("a piece has a vertex that is not a number; allowed: finite coordinates")
-    first = np.cumsum([0, *(len(piece.vertices) for piece in pieces)])
+    counts = np.array([len(piece.vertices) for piece in pieces], dtype=np.int64)
+    first = np.concatenate([np.zeros(1, np.int64), np.cumsum(counts)])
     edge_counts = np.concatenate([np.zeros(1, np.int64), *(piece.neighbour_counts for piece in pieces)])
     neighbours = [piece.neighbours + start for piece, start in zip(pieces, first[:-1], strict=True)]
-    centres = [piece.vertices.mean(axis=0) for piece in pieces]
-    radii = [
-        np.linalg.norm(piece.vertices - centre, axis=1).max() for piece, centre in zip(pieces, centres, strict=True)
-    ]
+    # All pieces at once: this is on the way from a user's hand to the chart.
+    starts = first[:-1]
+    centres = np.add.reduceat(vertices, starts) / counts[:, None] if len(pieces) else np.empty((0, 3))
+    from_centre = np.linalg.norm(vertices - np.repeat(centres, counts, axis=0), axis=1)
     return Hulls(
-        vertices=np.concatenate([np.empty((0, 3)), *(piece.vertices for piece in pieces)]),
+        vertices=vertices,
         first=first.astype(np.int32),
         edge_first=np.cumsum(edge_counts).astype(np.int32),
         neighbours=np.concatenate([np.empty(0, np.int64), *neighbours]).astype(np.int32),
-        compass=np.array(
-            [start + _farthest(piece.vertices) for piece, start in zip(pieces, first[:-1], strict=True)], dtype=np.int32
-        ).reshape(-1, 6 * WINDS * WINDS),
+        compass=_farthest(vertices, starts, counts).astype(np.int32),
         part=np.array(parts, dtype=np.int32),
-        centres=np.array(centres, dtype=np.float64).reshape(-1, 3),
-        radii=np.array(radii, dtype=np.float64),
-        reach=np.array([_reach(piece.vertices, axis) for piece in pieces], dtype=np.float64),
+        centres=np.ascontiguousarray(centres, dtype=np.float64),
+        radii=_greatest(from_centre, starts),
+        reach=_greatest(_from_axis(vertices, axis), starts),
     )
 
 
-def _farthest(vertices: Array) -> NDArray[np.int64]:
-    """Return the vertex that is farthest along the middle of each wind of the compass, (6 * WINDS * WINDS,)."""
-    farthest: NDArray[np.int64] = np.argmax(_winds() @ vertices.T, axis=1)
+def _greatest(values: Array, starts: Indices) -> Array:
+    """Return the greatest of the values of each piece, whose first ones are at `starts`."""
+    return np.maximum.reduceat(values, starts) if len(starts) else np.empty(0)
+
+
+def _farthest(vertices: Array, starts: Indices, counts: Indices) -> Indices:
+    """Return, for each piece, the vertex farthest along the middle of each wind, (pieces, 6 * WINDS * WINDS)."""
+    if not len(starts):
+        return np.empty((0, 6 * WINDS * WINDS), np.int64)
+    along = vertices @ _winds().T
+    is_farthest = along == np.repeat(np.maximum.reduceat(along, starts), counts, axis=0)
+    place = np.where(is_farthest, np.arange(len(vertices))[:, None], len(vertices))
+    farthest: Indices = np.minimum.reduceat(place, starts)
     return farthest
 
 
@@ -65,8 +76,7 @@ def _winds() -> Array:
     return np.concatenate(sides)
 
 
-def _reach(vertices: Array, axis: int | None) -> float:
+def _from_axis(vertices: Array, axis: int | None) -> Array:
     if axis is None:
-        return 0.0
-    across = np.delete(vertices, axis, axis=1)
-    return float(np.linalg.norm(across, axis=1).max())
+        return np.zeros(len(vertices))
+    return np.linalg.norm(np.delete(vertices, axis, axis=1), axis=1)

@@ -14,6 +14,7 @@ from geometry.errors import GeometryError
 from geometry.hulls import packed_hulls
 from geometry.kernel import Hulls
 from geometry.machine import JoinedPair
+from geometry.pieces import ConvexPiece
 from geometry.plane_kernel import Groups, Pairs
 from geometry.scene import Motion, Scene, ScenePart, Side
 
@@ -94,13 +95,13 @@ def _plane(scene: Scene, motion_a: Motion, members_a: list[int], motion_b: Motio
     a = _body(scene, members_a, motion_a)
     b = _body(scene, members_b, motion_b)
     checked = np.zeros((len(scene.parts), len(scene.parts)), dtype=bool)
-    required = np.zeros_like(checked, dtype=np.float64)
     for one in members_a:
         for other in members_b:
             checked[one, other] = is_checked(scene.parts[one], scene.parts[other], scene.setup.room.joined)
-            required[one, other] = scene.required_mm(scene.parts[one], scene.parts[other])
     i, j = np.nonzero(checked[np.ix_(a.part, b.part)])
-    needed = required[a.part[i], b.part[j]]
+    with_patient = np.array([part.kind != "machine" for part in scene.parts])
+    required_mm = scene.setup.required.of_pair_mm
+    needed = np.where(with_patient[a.part[i]] | with_patient[b.part[j]], required_mm(True), required_mm(False))
     if not (np.isfinite(needed) & (needed > 0.0)).all():
         raise GeometryError(f"required clearance = {needed.min():g} mm; allowed: above 0 for every pair")
     pairs = Pairs(i.astype(np.int32), j.astype(np.int32), needed, _groups(a, b, i, j, needed))
@@ -113,7 +114,10 @@ def _groups(a: Hulls, b: Hulls, i: Indices, j: Indices, required: Array) -> Grou
     start_of_piece = np.searchsorted(i, np.arange(len(a.radii)))
     starts = np.flatnonzero((place - start_of_piece[i]) % GROUP == 0)
     first = np.append(starts, len(i))
-    spheres = [_sphere(b, np.unique(j[start:stop])) for start, stop in pairwise(first)]
+    # Most pieces of a are checked against the same ones of b, in the same groups.
+    members = [tuple(j[start:stop]) for start, stop in pairwise(first)]
+    known = {group: _sphere(b, group) for group in dict.fromkeys(members)}
+    spheres = [known[group] for group in members]
     return Groups(
         first.astype(np.int32),
         np.array([centre for centre, _ in spheres]).reshape(-1, 3),
@@ -123,7 +127,7 @@ def _groups(a: Hulls, b: Hulls, i: Indices, j: Indices, required: Array) -> Grou
     )
 
 
-def _sphere(hulls: Hulls, pieces: Indices) -> tuple[Array, float]:
+def _sphere(hulls: Hulls, pieces: tuple[int, ...]) -> tuple[Array, float]:
     """Return centre and radius of a sphere about some pieces."""
     points = np.concatenate([hulls.vertices[hulls.first[p] : hulls.first[p + 1]] for p in pieces])
     centre = 0.5 * (points.min(axis=0) + points.max(axis=0))
@@ -131,6 +135,12 @@ def _sphere(hulls: Hulls, pieces: Indices) -> tuple[Array, float]:
 
 
 def _body(scene: Scene, members: list[int], motion: Motion) -> Hulls:
-    pieces = [piece for k in members for piece in scene.parts[k].pieces]
-    parts = [k for k in members for _ in scene.parts[k].pieces]
-    return packed_hulls(pieces, parts, _TURN_AXIS[motion])
+    pieces = tuple(piece for k in members for piece in scene.parts[k].pieces)
+    parts = tuple(k for k in members for _ in scene.parts[k].pieces)
+    return _packed(pieces, parts, _TURN_AXIS[motion])
+
+
+@lru_cache(maxsize=8)
+def _packed(pieces: tuple[ConvexPiece, ...], parts: tuple[int, ...], axis: int | None) -> Hulls:
+    """Pack a body; remembered, since what a user changes leaves most bodies as they are."""
+    return packed_hulls(pieces, parts, axis)

@@ -100,6 +100,7 @@ def build_scene(setup: Setup) -> Scene:
     return Scene(setup, tuple(parts), couch, p_isocentre, _beyond_travel(room, setup, couch))
 
 
+@lru_cache(maxsize=16)
 def patient_solids(patient: Body | Surface) -> tuple[tuple[str, Solid], ...]:
     """Return the named solids of the envelope, in DICOM patient axes, mm."""
     return body_parts(patient) if isinstance(patient, Body) else (("patient", patient.solid),)
@@ -111,19 +112,25 @@ def patient_placement(setup: Setup) -> Array:
     The envelope's lowest point lies `height_mm` above the table, its nearest point along the table
     `from_head_end_mm` from the head end, its mid-line (patient x = 0) at `lateral_mm`.
     """
-    turn = R_dicom_tabletop(setup.patient_position).T
-    solids = tuple(solid for _, solid in patient_solids(setup.patient))
-    pieces, _ = faceted_pieces(Group(solids), setup.room.max_excess_mm)
-    points = np.concatenate([piece.vertices for piece in pieces]) @ turn.T
+    farthest, lowest = _extent_on_table(setup.patient, setup.patient_position, setup.room.max_excess_mm)
     where = setup.on_table
     shift = np.array(
         [
             where.lateral_mm,
-            setup.room.couch.head_end_mm - where.from_head_end_mm - points[:, 1].max(),
-            where.height_mm - points[:, 2].min(),
+            setup.room.couch.head_end_mm - where.from_head_end_mm - farthest,
+            where.height_mm - lowest,
         ]
     )
-    return transform(turn, shift)
+    return transform(R_dicom_tabletop(setup.patient_position).T, shift)
+
+
+@lru_cache(maxsize=16)
+def _extent_on_table(patient: Body | Surface, position: str, max_excess_mm: float) -> tuple[float, float]:
+    """Return the greatest table-top Y and the least Z of an envelope whose origin lies at the table top's, mm."""
+    solids = tuple(solid for _, solid in patient_solids(patient))
+    pieces, _ = faceted_pieces(Group(solids), max_excess_mm)
+    points = np.concatenate([piece.vertices for piece in pieces]) @ R_dicom_tabletop(position)
+    return float(points[:, 1].max()), float(points[:, 2].min())
 
 
 def faceted_pieces(solid: Solid, max_excess_mm: float) -> tuple[tuple[ConvexPiece, ...], float]:
@@ -168,9 +175,18 @@ def _machine_part(part: Part, setup: Setup, couch: CouchPose) -> ScenePart:
 
 
 def _placed(part: Part, side: Side, motion: Motion, matrix: Array, max_excess_mm: float) -> ScenePart:
-    pieces, excess = faceted_pieces(part.solid, max_excess_mm)
-    placed = tuple(piece.placed(matrix) for piece in pieces)
-    return ScenePart(part.name, side, motion, part.kind, placed, excess, part.colour)
+    pieces, excess = _placed_pieces(cast(Hashable, part.solid), max_excess_mm, tuple(matrix.ravel()))
+    return ScenePart(part.name, side, motion, part.kind, pieces, excess, part.colour)
+
+
+@lru_cache(maxsize=1024)
+def _placed_pieces(
+    hashable: Hashable, max_excess_mm: float, matrix: tuple[float, ...]
+) -> tuple[tuple[ConvexPiece, ...], float]:
+    """Return a solid's pieces, moved; the same objects while what they are part of stays where it is."""
+    pieces, excess = faceted_pieces(cast(Solid, hashable), max_excess_mm)
+    T = np.array(matrix).reshape(4, 4)
+    return tuple(piece.placed(T) for piece in pieces), excess
 
 
 def _arm_matrix(part: Part, setup: Setup) -> Array:

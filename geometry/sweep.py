@@ -18,9 +18,11 @@ from geometry.tasks import Tiles, run_tiles
 Array = NDArray[np.float64]
 Indices = NDArray[np.int32]
 
-# Poses each way that share a sifting of the pairs, and how many where only one axis turns.
-BLOCK = 12
-POSES = BLOCK * BLOCK
+# Poses each way that share a sifting of the pairs: what fits into that many degrees, within bounds; on a coarse grid
+# more of them would have too little in common. And how many where only one axis turns.
+BLOCK_DEG = 12.0
+BLOCK = (3, 12)
+POSES = 144
 # Of one call into compiled code, some hundredths of a second.
 POSES_OF_CALL = 5000
 
@@ -92,7 +94,10 @@ def sweep_plane(
         np.full((rows, columns, 3), np.nan),
         np.full((rows, columns, 3), np.nan),
     )
-    block = (1 if columns == 1 else POSES if rows == 1 else BLOCK, 1 if rows == 1 else POSES if columns == 1 else BLOCK)
+    block = (
+        1 if columns == 1 else POSES if rows == 1 else _block(gantry),
+        1 if rows == 1 else POSES if columns == 1 else _block(couch),
+    )
     tiles = np.array([(0, columns, j, min(j + block[1], rows)) for j in range(0, rows, block[1])])
 
     def work(hand: Tiles, memory: Memory, lists: Lists) -> None:
@@ -100,6 +105,12 @@ def sweep_plane(
 
     run_tiles(work, tiles, plane.pairs, progress, "exact clearance", threads, rows * columns // POSES_OF_CALL)
     return field
+
+
+def _block(angles: Angles) -> int:
+    """Return how many of some rising angles are walked together."""
+    step_deg = math.degrees(float(angles.angle[-1] - angles.angle[0])) / (len(angles.angle) - 1)
+    return min(max(round(BLOCK_DEG / step_deg), BLOCK[0]), BLOCK[1])
 
 
 def angles_of(angles_deg: Array) -> Angles:
