@@ -1,6 +1,6 @@
 """From a set-up to everything that is said of it: exact clearances, the proof, states and spans."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -69,23 +69,33 @@ class Pose:
 def assess(setup: Setup, options: Options, progress: Progress | None = None) -> Assessment:
     """Compute the exact map, the proof and the spans of a set-up. GeometryError, Cancelled."""
     progress = progress or Silent()
-    scene = build_scene(setup)
-    gantry, couch = setup.room.gantry, setup.room.couch.turntable
-    exact = sweep(
+    return assess_map(exact_map(build_scene(setup), options, progress), options, progress)
+
+
+def exact_map(scene: Scene, options: Options, progress: Progress | None = None) -> ClearanceMap:
+    """Compute the exact clearance on the grid of `options` over the room's travel. Raises Cancelled."""
+    gantry, couch = scene.setup.room.gantry, scene.setup.room.couch.turntable
+    return sweep(
         scene,
         grid_deg(gantry.low, gantry.high, options.gantry_step_deg),
         grid_deg(couch.low, couch.high, options.couch_step_deg),
         progress,
     )
-    proof = prove(scene, *proof_steps(setup.room, options), progress)
-    tolerances = tolerances_of(setup.room, options)
+
+
+def assess_map(exact: ClearanceMap, options: Options, progress: Progress | None = None) -> Assessment:
+    """Prove what an exact map leaves open, with states and spans at its grid angles. Raises Cancelled."""
+    scene = exact.scene
+    room = scene.setup.room
+    proof = prove(scene, *proof_steps(room, options), progress or Silent())
+    tolerances = tolerances_of(room, options)
     state = _states(exact, proof, tolerances)
     spans: tuple[Span, ...] = ()
     if not scene.no_travel:
         spans = tuple(
             span
             for couch_deg in exact.couch_deg
-            for span in spans_at(proof, tolerances, scene, float(couch_deg), gantry.readout)
+            for span in spans_at(proof, tolerances, scene, float(couch_deg), room.gantry.readout)
         )
     return Assessment(scene, options, exact, proof, state, spans)
 
@@ -94,10 +104,24 @@ def assess_pose(setup: Setup, gantry_deg: float, couch_deg: float, options: Opti
     """Compute what `assess` would say of one pair of angles, any finite ones, without the rest of the plane."""
     options = options or Options()
     scene = build_scene(setup)
-    room = setup.room
-    tolerances = tolerances_of(room, options)
+    pose = exact_pose(scene, gantry_deg, couch_deg)
+    tolerances = tolerances_of(setup.room, options)
     gantry_branches = unwrapped_deg(gantry_deg, tolerances.gantry_travel_deg)
     couch_branches = unwrapped_deg(couch_deg, tolerances.couch_travel_deg)
+    if pose.state is State.PERMITTED and not any(
+        _permitted_alone(scene, options, tolerances, gantry, couch)
+        for gantry in gantry_branches
+        for couch in couch_branches
+    ):
+        return replace(pose, state=State.UNPROVED)
+    return pose
+
+
+def exact_pose(scene: Scene, gantry_deg: float, couch_deg: float) -> Pose:
+    """Compute one pair of true angles, any finite ones; PERMITTED says here that only the proof is still to come."""
+    room = scene.setup.room
+    gantry_branches = unwrapped_deg(gantry_deg, (room.gantry.low, room.gantry.high))
+    couch_branches = unwrapped_deg(couch_deg, (room.couch.turntable.low, room.couch.turntable.high))
     exact = sweep(
         scene,
         np.array([gantry_branches[0] if gantry_branches else gantry_deg]),
@@ -107,12 +131,6 @@ def assess_pose(setup: Setup, gantry_deg: float, couch_deg: float, options: Opti
     state = exact_state(float(exact.clearance_mm[0, 0]), float(exact.slack_mm[0, 0]))
     if scene.no_travel or not gantry_branches or not couch_branches:
         state = State.NO_TRAVEL
-    elif state is State.PERMITTED and not any(
-        _permitted_alone(scene, options, tolerances, gantry, couch)
-        for gantry in gantry_branches
-        for couch in couch_branches
-    ):
-        state = State.UNPROVED
     machine, other = int(exact.machine_part[0, 0]), int(exact.couch_part[0, 0])
     known = machine >= 0
     return Pose(
@@ -127,6 +145,20 @@ def assess_pose(setup: Setup, gantry_deg: float, couch_deg: float, options: Opti
         exact.machine_point_mm[0, 0] if known else None,
         exact.couch_point_mm[0, 0] if known else None,
     )
+
+
+def proved_pose(assessment: Assessment, pose: Pose) -> Pose:
+    """Return an exact pose of the assessment's scene with the state that holds for its reading, tolerances included."""
+    if pose.state is not State.PERMITTED:
+        return pose
+    tolerances = tolerances_of(assessment.scene.setup.room, assessment.options)
+    if any(
+        is_permitted(assessment.proof, tolerances, gantry, couch)
+        for gantry in unwrapped_deg(pose.gantry_deg, tolerances.gantry_travel_deg)
+        for couch in unwrapped_deg(pose.couch_deg, tolerances.couch_travel_deg)
+    ):
+        return pose
+    return replace(pose, state=State.UNPROVED)
 
 
 def proof_steps(room: Room, options: Options) -> tuple[Steps, Steps]:

@@ -1,0 +1,1 @@
+"""The window. Only here, and in `app.jobs`, is Qt known."""
