@@ -18,7 +18,7 @@ from geometry.landmarks import Landmark
 from geometry.machine import EVERY_STAGE, Axis, Mount, Part, PartKind, Room, Stage
 from geometry.pieces import ConvexPiece, convex_piece
 from geometry.setup import Setup, Surface
-from geometry.solids import Group, Solid
+from geometry.solids import Solid
 
 Array = NDArray[np.float64]
 
@@ -127,8 +127,7 @@ def patient_placement(setup: Setup) -> Array:
 @lru_cache(maxsize=16)
 def _extent_on_table(patient: Body | Surface, position: str, max_excess_mm: float) -> tuple[float, float]:
     """Return the greatest table-top Y and the least Z of an envelope whose origin lies at the table top's, mm."""
-    solids = tuple(solid for _, solid in patient_solids(patient))
-    pieces, _ = faceted_pieces(Group(solids), max_excess_mm)
+    pieces = [piece for _, solid in patient_solids(patient) for piece in faceted_pieces(solid, max_excess_mm)[0]]
     points = np.concatenate([piece.vertices for piece in pieces]) @ R_dicom_tabletop(position)
     return float(points[:, 1].max()), float(points[:, 2].min())
 
