@@ -10,6 +10,7 @@ from app.files.dicom import (
     structure_patient_position,
 )
 from app.files.reading import Table
+from app.files.setup_limits import BODY_POSITIONS, SLOPE_DEG
 from app.files.shapes import mesh_of
 from app.files.values import Limits
 from app.files.wording import printable
@@ -31,8 +32,6 @@ _SOURCES: Final[tuple[Source, ...]] = get_args(Source)
 _ARMS: Final[tuple[Arm, ...]] = get_args(Arm)
 _BUILDS: Final[tuple[Build, ...]] = ("mean", "man", "woman")
 _LEGS: Final[tuple[Legs, ...]] = get_args(Legs)
-_ON_BACK_OR_FRONT: Final = ("HFS", "HFP", "FFS", "FFP")
-_LARGEST_SLOPE: Final = Limits(0.0, 45.0)
 
 
 @dataclass(frozen=True)
@@ -58,8 +57,8 @@ def patient_of(top: Table) -> Patient:
 
 
 def _body(table: Table, position: str) -> Body | None:
-    if position not in _ON_BACK_OR_FRONT:
-        table.fault("position", f"'{position}' with a body made from sizes", f"one of {', '.join(_ON_BACK_OR_FRONT)}")
+    if position not in BODY_POSITIONS:
+        table.fault("position", f"'{position}' with a body made from sizes", f"one of {', '.join(BODY_POSITIONS)}")
     stature_mm = table.number("stature_mm", Limits(*STATURE_RANGE_MM))
     mass_kg = table.optional_number("mass_kg", Limits(*MASS_RANGE_KG))
     build = table.choice("build", _BUILDS, default="mean")
@@ -67,7 +66,7 @@ def _body(table: Table, position: str) -> Body | None:
     arm_left = table.choice("arm_left", _ARMS, default="at the side")
     arm_right = table.choice("arm_right", _ARMS, default="at the side")
     legs = table.choice("legs", _LEGS, default="together")
-    slope_deg = table.number("slope_deg", _LARGEST_SLOPE, default=0.0)
+    slope_deg = table.number("slope_deg", SLOPE_DEG, default=0.0)
     prone = position.endswith("P")
     return table.built(lambda: Body(stature_mm, mass_kg, build, sizes, arm_left, arm_right, legs, slope_deg, prone))
 

@@ -5,21 +5,20 @@ from typing import Final
 
 from app.files.part_keys import Names
 from app.files.reading import Table
-from app.files.values import Limits
+from app.files.setup_limits import COVERAGE, MOST_COMPONENTS, REQUIRED_MM, SD_MM
 from geometry.machine import Room
 from geometry.setup import Component, Required
 
 ROOM_MODEL: Final = "room model"
-_MOST: Final = 50
 
 
 def required_of(top: Table, room: Room | None) -> Required:
     """Return the required clearance; `room` is None where its own file is at fault."""
     table = top.required_table("required")
     required = Required(
-        fixed_mm=table.number("fixed_mm", Limits(0.0, 1000.0)),
+        fixed_mm=table.number("fixed_mm", REQUIRED_MM),
         reason=table.text("reason"),
-        k=table.number("k", Limits(0.0, 10.0), default=2.0),
+        k=table.number("k", COVERAGE, default=2.0),
         components=tuple(_components(table, room)),
     )
     if table.sound and not required.of_pair_mm(with_patient=False) > 0.0:
@@ -35,9 +34,9 @@ def _components(table: Table, room: Room | None) -> Iterator[Component]:
             table.fault("with_survey", "true, but the room has no survey", "a room with [survey], or a component")
         elif room is not None and room.survey is not None:
             yield Component(ROOM_MODEL, room.survey.uncertainty_mm)
-    for component in table.tables("component", _MOST):
+    for component in table.tables("component", MOST_COMPONENTS):
         yield Component(
             name=names.take(component),
-            sd_mm=component.number("sd_mm", Limits(0.0, 200.0)),
+            sd_mm=component.number("sd_mm", SD_MM),
             patient_only=component.flag("patient_only"),
         )

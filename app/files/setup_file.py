@@ -12,6 +12,7 @@ from app.files.patient_keys import LANDMARKS, Patient, patient_of
 from app.files.reading import Reading, Table
 from app.files.required_keys import required_of
 from app.files.room_file import read_room
+from app.files.setup_limits import FROM_HEAD_END_MM, HEIGHT_MM, LATERAL_MM, OFFSET_MM, WHOLE_TURN_DEG
 from app.files.toml_source import parsed_toml
 from app.files.values import Limits, Problem, Refused
 from app.files.wording import MISSING, described, did_you_mean, one_of, printable
@@ -22,8 +23,6 @@ from geometry.setup import Isocentre, OnTable, Setup, Surface
 
 SETUP_FORMAT: Final = 1
 
-_WHOLE_TURN: Final = Limits(-360.0, 360.0)
-_DISTANCE: Final = Limits(-3000.0, 3000.0)
 _FORMS: Final = ("landmark", "dicom_mm", "from_plan")
 _OFFSETS: Final = ("left_mm", "head_mm", "front_mm")
 _MOST_FITTED: Final = 100
@@ -95,9 +94,9 @@ def _taken_names(top: Table, room: Room | None, patient: Patient) -> set[str]:
 def _on_table(top: Table) -> OnTable:
     table = top.required_table("table")
     return OnTable(
-        from_head_end_mm=table.number("from_head_end_mm", Limits(-5000.0, 5000.0)),
-        lateral_mm=table.number("lateral_mm", Limits(-1000.0, 1000.0), default=0.0),
-        height_mm=table.number("height_mm", Limits(-500.0, 1000.0), default=0.0),
+        from_head_end_mm=table.number("from_head_end_mm", FROM_HEAD_END_MM),
+        lateral_mm=table.number("lateral_mm", LATERAL_MM, default=0.0),
+        height_mm=table.number("height_mm", HEIGHT_MM, default=0.0),
     )
 
 
@@ -108,7 +107,7 @@ def _couch(top: Table) -> tuple[float, float, float]:
         return 0.0, 0.0, 0.0
     pitch_deg = table.number("pitch_deg", LARGEST_TILT, default=0.0)
     roll_deg = table.number("roll_deg", LARGEST_TILT, default=0.0)
-    return pitch_deg, roll_deg, table.number("eccentric_deg", _WHOLE_TURN, default=0.0)
+    return pitch_deg, roll_deg, table.number("eccentric_deg", WHOLE_TURN_DEG, default=0.0)
 
 
 def _isocentre(top: Table, patient: Patient) -> Isocentre:
@@ -136,7 +135,7 @@ def _from_landmark(table: Table, patient: Patient) -> Isocentre:
         known = [name for name, _ in patient.envelope.landmarks_mm]
         if landmark not in known:
             table.fault("landmark", f"'{landmark}', not among patient.landmarks", one_of(known))
-    offsets = [table.number(key, _DISTANCE, default=0.0) for key in _OFFSETS]
+    offsets = [table.number(key, OFFSET_MM, default=0.0) for key in _OFFSETS]
     left_mm, head_mm, front_mm = offsets
     return Isocentre(landmark, (left_mm, head_mm, front_mm))
 
@@ -210,4 +209,4 @@ def _arm_place(arm: Arm, value: object) -> str | float:
 def _angle(value: object) -> float:
     if isinstance(value, str):
         raise Refused([Problem("", described(value), "degrees or 'any'")])
-    return values.number(value, _WHOLE_TURN)
+    return values.number(value, WHOLE_TURN_DEG)
