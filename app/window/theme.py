@@ -7,6 +7,7 @@ alone, and no colour means "go" or "stop".
 from dataclasses import dataclass
 from typing import Final
 
+from PySide6.QtCore import Qt
 from PySide6.QtGui import QColor, QGuiApplication, QPalette
 
 
@@ -16,9 +17,9 @@ class Theme:
 
     `window` lies behind everything, `panel` behind controls, `canvas` behind charts and the room; `line` parts them.
     `ink` is for text and drawing, `faint` for what can wait, `accent` for what can be touched or is chosen, with
-    `on_accent` for text on it. `marked` is for what needs the eye: contact, a banner's edge. `halo` goes around ink that
-    lies on the colours of clearance, whose `permitted` is the outline of permitted angles, `kept` that of a map kept to
-    compare with, `required` the contour where the clearance equals what is required. The rest are materials of the room.
+    `on_accent` for text on it. `marked` is for what needs the eye: contact, a banner's edge. `halo` goes around ink
+    that lies on the colours of clearance, whose `permitted` is the outline of permitted angles, `kept` that of a map
+    kept to compare with, `required` the contour where the clearance equals what is required. The rest are materials.
     """
 
     dark: bool
@@ -103,7 +104,8 @@ def theme_for(application: QGuiApplication, choice: str) -> Theme:
     """Return the theme that a person chose, "light", "dark" or, with anything else, that of the system."""
     if choice in {"light", "dark"}:
         return DARK if choice == "dark" else LIGHT
-    return DARK if application.palette().window().color().lightness() < 128 else LIGHT
+    dark = application.styleHints().colorScheme() is Qt.ColorScheme.Dark
+    return DARK if dark else LIGHT
 
 
 def palette_of(theme: Theme) -> QPalette:
