@@ -79,4 +79,5 @@ def _winds() -> Array:
 def _from_axis(vertices: Array, axis: int | None) -> Array:
     if axis is None:
         return np.zeros(len(vertices))
-    return np.linalg.norm(np.delete(vertices, axis, axis=1), axis=1)
+    distances: Array = np.linalg.norm(np.delete(vertices, axis, axis=1), axis=1)
+    return distances
