@@ -1,8 +1,7 @@
-"""The command line: `wideberth map` and `wideberth pose`."""
+"""The command line: `wideberth map`, `wideberth pose` and `wideberth check`."""
 
 import argparse
 import datetime
-import math
 import sys
 import time
 from collections.abc import Callable, Sequence
@@ -11,6 +10,8 @@ from typing import TYPE_CHECKING, Final, TypeVar
 
 from app import __version__
 from app.cautions import CAUTIONS
+from app.check_command import add_check
+from app.command_options import add_proof_options, number_type
 from app.terminal import TerminalProgress
 from geometry.errors import BadInput, Cancelled, Fault, GeometryError, WideberthError
 
@@ -30,9 +31,6 @@ def run(arguments: Sequence[str]) -> int:
     """Run one command and return its exit status; every fault goes to standard error, none as a traceback."""
     parser = _parser()
     chosen = parser.parse_args(arguments)
-    if not hasattr(chosen, "command"):
-        parser.print_help()
-        return DONE
     try:
         return int(chosen.command(chosen))
     except BadInput as error:
@@ -54,10 +52,17 @@ def _parser() -> argparse.ArgumentParser:
         epilog=" ".join(CAUTIONS),
     )
     parser.add_argument("--version", action="version", version=f"wideberth {__version__}")
-    commands = parser.add_subparsers(metavar="COMMAND")
+    parser.set_defaults(command=_window, setup=None)
+    commands = parser.add_subparsers(metavar="COMMAND", description="Without one the window opens.")
+    _add_open(commands.add_parser("open", help="the window on a set-up", epilog=CAUTIONS[0]))
     _add_map(commands.add_parser("map", help="the permitted angles of a set-up", epilog=CAUTIONS[0]))
     _add_pose(commands.add_parser("pose", help="the clearance at one pair of angles", epilog=CAUTIONS[0]))
+    add_check(commands.add_parser("check", help="the fields of a plan, and the moves between them", epilog=CAUTIONS[0]))
     return parser
+
+
+def _add_open(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument("setup", metavar="SETUP", type=Path, help="set-up file, *.setup.toml")
 
 
 def _add_map(parser: argparse.ArgumentParser) -> None:
@@ -65,49 +70,27 @@ def _add_map(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("setup", metavar="SETUP", type=Path, help="set-up file, *.setup.toml")
     parser.add_argument("--out", metavar="FILE", type=Path, action="append", default=[], help=MAP_SUFFIXES)
     parser.add_argument("--grid", metavar="FILE.csv", type=Path, help="every pair of angles")
-    step = _number("deg", 0.05, 45.0)
+    step = number_type("deg", 0.05, 45.0)
     parser.add_argument("--gantry-step", metavar="DEG", type=step, default=1.0, help="grid of gantry angles, 1")
     parser.add_argument("--couch-step", metavar="DEG", type=step, default=1.0, help="grid of couch angles, 1")
-    parser.add_argument(
-        "--required",
-        metavar="MM",
-        type=_number("mm", 0.1, 500.0),
-        help="required clearance of every pair, in place of the set-up's",
-    )
-    parser.add_argument(
-        "--edge", metavar="DEG", type=_number("deg", 0.05, 5.0), default=0.25, help="edge resolution of the proof, 0.25"
-    )
-    tolerance = _number("deg", 0.0, 10.0)
-    for axis in ("gantry", "couch"):
-        parser.add_argument(
-            f"--{axis}-tolerance", metavar="DEG", type=tolerance, default=1.0, help=f"of the {axis} readout, 1"
-        )
+    add_proof_options(parser)
     parser.add_argument("--quiet", action="store_true", help="no progress, no summary")
 
 
 def _add_pose(parser: argparse.ArgumentParser) -> None:
     parser.set_defaults(command=_pose)
     parser.add_argument("setup", metavar="SETUP", type=Path, help="set-up file, *.setup.toml")
-    angle = _number("deg", -1e6, 1e6)
+    angle = number_type("deg", -1e6, 1e6)
     parser.add_argument("--gantry", metavar="DEG", type=angle, required=True, help="IEC 61217")
     parser.add_argument("--couch", metavar="DEG", type=angle, required=True, help="IEC 61217")
     parser.add_argument("--out", metavar="FILE", type=Path, help="the scene: .glb, .ply or .stl")
     parser.add_argument("--json", action="store_true", help="as JSON")
 
 
-def _number(unit: str, low: float, high: float) -> Callable[[str], float]:
-    """Return an argparse type for a number in a range."""
+def _window(chosen: argparse.Namespace) -> int:
+    from app.window.start import run_window  # noqa: PLC0415 - Qt is not needed without a window
 
-    def parse(text: str) -> float:
-        try:
-            value = float(text)
-        except ValueError:
-            value = math.nan
-        if not low <= value <= high:
-            raise argparse.ArgumentTypeError(f"found {text!r}; allowed: {low:g} to {high:g} {unit}")
-        return value
-
-    return parse
+    return run_window(chosen.setup)
 
 
 def _map(chosen: argparse.Namespace) -> int:

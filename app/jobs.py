@@ -17,8 +17,10 @@ from geometry.progress import Progress
 
 Publish = Callable[[Any], None]
 Work = Callable[[Progress, Publish], Any]
-Receive = Callable[[Any], None]
+Receive = Callable[[Any], object]
 
+# In place of a fraction, where a job has yet to tell how far it is.
+UNKNOWN: Final = -1.0
 _POLL_MS: Final = 5
 
 
@@ -28,7 +30,11 @@ def _ignore(_: object) -> None:
 
 @dataclass(eq=False)
 class Job:
-    """One piece of work, as the GUI's thread sees it. `lane` is its kind: jobs of a lane never run side by side."""
+    """One piece of work, as the GUI's thread sees it.
+
+    `lane` is its kind: jobs of a lane never run side by side. `to_the_end`: what a person asked to be written is
+    written even if the program is closed meanwhile.
+    """
 
     lane: str
     work: Work
@@ -36,6 +42,7 @@ class Job:
     on_part: Receive = _ignore
     on_error: Receive = _ignore
     label: str = ""
+    to_the_end: bool = False
     stop: threading.Event = field(default_factory=threading.Event)
 
 
@@ -83,8 +90,8 @@ class _Lane:
 class Jobs(QObject):
     """Starts, supersedes and stops jobs. All methods and callbacks belong to the GUI's thread.
 
-    `progressed` (lane, fraction 0 to 1, message) and `finished` (lane) tell what is under way. A job that was cancelled
-    or superseded calls back no more.
+    `progressed` (lane, fraction 0 to 1 or `UNKNOWN`, message) and `finished` (lane) tell what is under way. A job that
+    was cancelled or superseded calls back no more.
     """
 
     progressed = Signal(str, float, str)
@@ -107,6 +114,8 @@ class Jobs(QObject):
         self._active.setdefault(job.lane, []).append(job)
         lane.waiting.put(job)
         self._timer.start()
+        if job.label:
+            self.progressed.emit(job.lane, UNKNOWN, job.label)
         return job
 
     def start_instead(self, job: Job) -> Job:
@@ -124,9 +133,11 @@ class Jobs(QObject):
         return bool(self._active.get(lane)) if lane is not None else any(self._active.values())
 
     def shutdown(self) -> None:
-        """Stop everything and wait for the threads: none is left afterwards."""
-        for lane in self._lanes:
-            self.cancel(lane)
+        """Stop everything but what is to be written, and wait for the threads: none is left afterwards."""
+        for jobs in self._active.values():
+            for job in jobs:
+                if not job.to_the_end:
+                    job.stop.set()
         for started in self._lanes.values():
             started.waiting.put(None)
         for started in self._lanes.values():

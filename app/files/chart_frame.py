@@ -82,8 +82,13 @@ def angle_ticks(low_deg: float, high_deg: float, most: int = 13) -> NDArray[np.f
     return np.arange(np.ceil(low_deg / step), np.floor(high_deg / step) + 1) * float(step)
 
 
-def label_angles(axes: Axes, which: str, low_deg: float, high_deg: float, name: str, own: Readout | None) -> None:
-    """Label an axis ("x" or "y") in [0, 360) and, on the other side, on the machine's own scale if it has one."""
+def label_angles(
+    axes: Axes, which: str, low_deg: float, high_deg: float, name: str, own: Readout | None, letters: float = 7.0
+) -> None:
+    """Label an axis ("x" or "y") in [0, 360) and, on the other side, on the machine's own scale if it has one.
+
+    `letters`: points of the figures on the machine's scale.
+    """
     ticks = angle_ticks(low_deg, high_deg)
     axis = axes.xaxis if which == "x" else axes.yaxis
     axis.set_ticks(ticks, [f"{number_text(reading_deg(tick))}°" for tick in ticks])
@@ -94,7 +99,7 @@ def label_angles(axes: Axes, which: str, low_deg: float, high_deg: float, name: 
     other = second.xaxis if which == "x" else second.yaxis
     other.set_ticks(ticks, [f"{number_text(shown_deg(own, tick))}°" for tick in ticks])
     other.set_label_text(f"{name}, as the machine shows it", fontsize=8, color=PALE_INK)
-    second.tick_params(labelsize=7, colors=PALE_INK, length=2)
+    second.tick_params(labelsize=letters, colors=PALE_INK, length=2)
 
 
 def hatched_box(axes: Axes, x: tuple[float, float], y: tuple[float, float], hatch: Hatch) -> None:

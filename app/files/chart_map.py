@@ -34,6 +34,7 @@ from app.files.chart_frame import (
 from app.files.provenance import Provenance
 from app.files.readings import own_scales
 from geometry.assess import Assessment
+from geometry.machine import Room
 from geometry.states import CODE_OF, State
 
 Array = NDArray[np.float64]
@@ -41,6 +42,7 @@ Array = NDArray[np.float64]
 _CONTOURS_MM: Final = (50.0, 100.0, 150.0, 200.0, 300.0)
 # A gap that no angle changes is a round number of mm as a rule; a contour just there would trace rounding errors.
 _BELOW_ROUND_MM: Final = 0.01
+_EDGE: Final = 0.025
 _CONTOUR_STEP_DEG: Final = 5.0
 _SHORT_HATCH: Final = Hatch("short of what is required", "none", "#ffffff", "////")
 _UNPROVED_HATCH: Final = Hatch("unproved, not permitted", "none", "#ffffff", "......")
@@ -58,25 +60,35 @@ def map_page(assessment: Assessment, provenance: Provenance) -> Figure:
     figure = new_page(provenance)
     scales = own_scales(assessment.scene.setup.room)
     axes = chart_axes(figure, with_scale=True, with_own=scales.gantry is not None)
-    gantry, couch = _limits(assessment)
+    with_contours = draw_map(axes, assessment)
+    if assessment.scene.no_travel:
+        no_travel_note(axes, provenance)
+    label_angles(axes, "x", *axes.get_xlim(), "Gantry", scales.gantry)
+    label_angles(axes, "y", *axes.get_ylim(), "Couch", scales.couch)
+    colour_scale(axes, left=1.075 if scales.couch is not None else 1.03)
+    legend(axes, map_samples(with_contours), columns=6)
+    return figure
+
+
+def draw_map(axes: Axes, assessment: Assessment, letters: float = 6.5) -> bool:
+    """Set an axes' limits and fill it: clearances, states, the permitted region. Tell whether it has contours.
+
+    `letters`: points of the contours' labels.
+    """
+    gantry, couch = map_limits(assessment.scene.setup.room)
     axes.set_xlim(*gantry)
     axes.set_ylim(*couch)
-    _fill_outside(axes, assessment, gantry, couch)
-    with_contours = _is_fine(assessment) and not assessment.scene.no_travel
+    fill_outside(axes, assessment.scene.setup.room)
     if assessment.scene.no_travel:
         hatched_box(axes, gantry, couch, NO_TRAVEL_HATCH)
-        no_travel_note(axes, provenance)
-    else:
-        _shade(axes, assessment)
-        _hatch_states(axes, assessment)
-        if with_contours:
-            _contours(axes, assessment)
-        _outline(axes, assessment.permitted_region)
-    label_angles(axes, "x", *gantry, "Gantry", scales.gantry)
-    label_angles(axes, "y", *couch, "Couch", scales.couch)
-    _colour_scale(axes, shifted=scales.couch is not None)
-    legend(axes, _samples(with_contours), columns=6)
-    return figure
+        return False
+    with_contours = _is_fine(assessment)
+    _shade(axes, assessment)
+    _hatch_states(axes, assessment)
+    if with_contours:
+        _contours(axes, assessment, letters)
+    _outline(axes, assessment.permitted_region)
+    return with_contours
 
 
 def clearance_colours() -> LinearSegmentedColormap:
@@ -84,18 +96,17 @@ def clearance_colours() -> LinearSegmentedColormap:
     return LinearSegmentedColormap.from_list("clearance", EDGE_COLOURS)
 
 
-def _limits(assessment: Assessment) -> tuple[tuple[float, float], tuple[float, float]]:
+def map_limits(room: Room) -> tuple[tuple[float, float], tuple[float, float]]:
     """Return what the axes show: the gantry's whole turn, from 180 over 0 to 180, or more, and the couch's travel."""
-    room = assessment.scene.setup.room
     couch = room.couch.turntable
     gantry = (min(-180.0, room.gantry.low), max(180.0, room.gantry.high))
     return gantry, (couch.low, couch.high)
 
 
-def _fill_outside(axes: Axes, assessment: Assessment, gantry: tuple[float, float], couch: tuple[float, float]) -> None:
+def fill_outside(axes: Axes, room: Room) -> None:
     """Hatch what of the whole turn the gantry's travel leaves out."""
-    travel = assessment.scene.setup.room.gantry
-    for low, high in ((gantry[0], travel.low), (travel.high, gantry[1])):
+    gantry, couch = map_limits(room)
+    for low, high in ((gantry[0], room.gantry.low), (room.gantry.high, gantry[1])):
         if high > low:
             hatched_box(axes, (low, high), couch, NO_TRAVEL_HATCH)
 
@@ -165,13 +176,13 @@ def _is_fine(assessment: Assessment) -> bool:
     return min(exact.clearance_mm.shape) > 1 and max(steps) <= _CONTOUR_STEP_DEG
 
 
-def _contours(axes: Axes, assessment: Assessment) -> None:
+def _contours(axes: Axes, assessment: Assessment, letters: float) -> None:
     exact = assessment.map
     grid = (exact.gantry_deg, exact.couch_deg)
     clearance = np.ma.masked_invalid(exact.clearance_mm)
     levels = [level - _BELOW_ROUND_MM for level in _CONTOURS_MM]
     lines = axes.contour(*grid, clearance, levels=levels, colors=[INK], linewidths=0.5, alpha=0.75, zorder=3)
-    _label_contours(axes, lines)
+    _label_contours(axes, lines, letters)
     required = axes.contour(
         *grid, np.ma.masked_invalid(exact.slack_mm), levels=[0.0], colors=[REQUIRED], linewidths=1.4, zorder=4
     )
@@ -179,10 +190,13 @@ def _contours(axes: Axes, assessment: Assessment) -> None:
     required.set_path_effects([withStroke(linewidth=2.8, foreground="white")])
 
 
-def _label_contours(axes: Axes, lines: ContourSet) -> None:
+def _label_contours(axes: Axes, lines: ContourSet, letters: float) -> None:
     # The method is typed as returning nothing in one of its forms.
-    for label in axes.clabel(lines, fmt="%.0f mm", fontsize=6.5, inline=True, inline_spacing=2, zorder=6):
+    for label in axes.clabel(lines, fmt="%.0f mm", fontsize=letters, inline=True, inline_spacing=2, zorder=6):
         label.set_path_effects([withStroke(linewidth=1.6, foreground="#ffffffb0")])
+        x, y = axes.transAxes.inverted().transform(axes.transData.transform(label.get_position()))
+        # Half a number at the chart's edge says nothing.
+        label.set_visible(bool(_EDGE < x < 1.0 - _EDGE and 1.5 * _EDGE < y < 1.0 - 1.5 * _EDGE))
 
 
 def _outline(axes: Axes, region: shapely.Geometry) -> None:
@@ -194,17 +208,18 @@ def _outline(axes: Axes, region: shapely.Geometry) -> None:
         )
 
 
-def _colour_scale(axes: Axes, *, shifted: bool) -> None:
-    """Draw the scale beside the chart, further off where the couch has a scale of its own there."""
-    place = axes.inset_axes((1.075 if shifted else 1.03, 0.0, 0.017, 1.0))
+def colour_scale(axes: Axes, left: float, letters: float = 7.0) -> None:
+    """Draw the scale beside the chart, from `left`, a share of the chart's width, in letters of so many points."""
+    place = axes.inset_axes((left, 0.0, 0.017, 1.0))
     scale = axes.figure.colorbar(ScalarMappable(Normalize(0.0, 1.0), clearance_colours()), cax=place)
     labels = [f"{edge:g}" for edge in EDGES_MM]
     scale.set_ticks(list(np.linspace(0.0, 1.0, len(EDGES_MM))), labels=[*labels[:-1], f"≥ {labels[-1]}"])
-    scale.ax.tick_params(labelsize=7, colors=INK, length=2)
+    scale.ax.tick_params(labelsize=letters, colors=INK, length=2)
     scale.set_label("Clearance, mm", fontsize=8, color=INK)
 
 
-def _samples(with_contours: bool) -> list[Artist]:
+def map_samples(with_contours: bool) -> list[Artist]:
+    """Return what the legend explains."""
     contour = Line2D(
         [], [], color=REQUIRED, linewidth=1.4, linestyle=(0, (4, 1.6)), label="clearance equals what is required"
     )

@@ -1,6 +1,7 @@
 """What DICOM files tell of a patient's surface and of a plan.
 
-Only the elements named here are read. Names, numbers and dates of patients never reach the program.
+The one place for pydicom; `app.files.plan_dicom` reads beams through it. Only the elements named are read. Names,
+numbers and dates of patients never reach the program.
 Sources: DICOM PS3.3 sections C.8.8.5, C.8.8.6 and C.8.8.8 (RT Structure Set), C.8.8.12, C.8.8.14 and C.8.8.25 (RT Plan,
 RT Ion Plan).
 """
@@ -10,7 +11,7 @@ import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Final
+from typing import TYPE_CHECKING, Final, TypeAlias
 
 import numpy as np
 from numpy.typing import NDArray
@@ -27,6 +28,8 @@ if TYPE_CHECKING:
 
 Array = NDArray[np.float64]
 Point = tuple[float, float, float]
+# A sequence's item or a whole file, for modules that may not import pydicom.
+Item: TypeAlias = "Dataset"
 
 LARGEST_FILE_BYTES: Final = 200_000_000
 # CLOSEDPLANAR_XOR outlines are holes where they overlap; an envelope fills holes.
@@ -57,11 +60,13 @@ def read_external_contour(path: Path | str, roi_name: str | None = None) -> Cont
     Raises BadInput: no RT Structure Set, none or several such structures, contours that are not closed, not in axial
     planes or not numbers, too many of them.
     """
-    dataset = _read(path, "RTSTRUCT", ["StructureSetROISequence", "ROIContourSequence", "RTROIObservationsSequence"])
-    with _reading(path, "structures"):
+    dataset = read_elements(
+        path, "RTSTRUCT", ["StructureSetROISequence", "ROIContourSequence", "RTROIObservationsSequence"]
+    )
+    with reading(path, "structures"):
         number, name = _external(path, dataset, roi_name)
     structure = f"structure '{printable(name)}'"
-    with _reading(path, structure):
+    with reading(path, structure):
         contours = _contours(path, dataset, number, structure)
     try:
         return ContourStack(contours)
@@ -74,9 +79,9 @@ def structure_patient_position(path: Path | str) -> str | None:
 
     Raises BadInput for a file that is none or a position that is not one of the eight of `frames`.
     """
-    dataset = _read(path, "RTSTRUCT", ["PatientPosition"])
-    with _reading(path, "Patient Position"):
-        return _position(path, dataset, "Patient Position")
+    dataset = read_elements(path, "RTSTRUCT", ["PatientPosition"])
+    with reading(path, "Patient Position"):
+        return position_of(path, dataset, "Patient Position")
 
 
 def read_plan_isocentres(path: Path | str) -> tuple[Point, ...]:
@@ -84,12 +89,12 @@ def read_plan_isocentres(path: Path | str) -> tuple[Point, ...]:
 
     Raises BadInput for a file that is none, or without an isocentre, or with one that is no point.
     """
-    dataset = _read(path, "RTPLAN", ["BeamSequence", "IonBeamSequence"])
+    dataset = read_elements(path, "RTPLAN", ["BeamSequence", "IonBeamSequence"])
     found: list[Point] = []
-    with _reading(path, "Beam Sequence"):
+    with reading(path, "Beam Sequence"):
         for place, control_point in _control_points(dataset):
-            with _reading(path, f"{place}, Isocenter Position"):
-                values = _numbers(control_point, "IsocenterPosition")
+            with reading(path, f"{place}, Isocenter Position"):
+                values = decimal_numbers(control_point, "IsocenterPosition")
             if not len(values):
                 continue
             if len(values) != 3 or not np.all(np.abs(values) <= LARGEST_MM):
@@ -111,11 +116,11 @@ def read_plan_patient_position(path: Path | str) -> str | None:
 
     Raises BadInput for a file that is none, a position that is not one of the eight of `frames`, or several.
     """
-    dataset = _read(path, "RTPLAN", ["PatientSetupSequence"])
-    with _reading(path, "Patient Setup Sequence"):
+    dataset = read_elements(path, "RTPLAN", ["PatientSetupSequence"])
+    with reading(path, "Patient Setup Sequence"):
         stated = [
-            _position(path, setup, f"Patient Setup Sequence item {k}, Patient Position")
-            for k, setup in enumerate(_items(dataset, "PatientSetupSequence"), start=1)
+            position_of(path, setup, f"Patient Setup Sequence item {k}, Patient Position")
+            for k, setup in enumerate(items_of(dataset, "PatientSetupSequence"), start=1)
         ]
     positions = sorted({position for position in stated if position is not None})
     if len(positions) > 1:
@@ -123,7 +128,7 @@ def read_plan_patient_position(path: Path | str) -> str | None:
     return positions[0] if positions else None
 
 
-def _read(path: Path | str, modality: str, keywords: list[str]) -> "Dataset":
+def read_elements(path: Path | str, modality: str, keywords: list[str]) -> "Dataset":
     """Return a dataset with the elements named, if the file is DICOM and of the modality."""
     file = checked_file(path, LARGEST_FILE_BYTES)
     # pydicom takes more than half a second to import.
@@ -132,7 +137,7 @@ def _read(path: Path | str, modality: str, keywords: list[str]) -> "Dataset":
     # Contents are checked here, element by element; pydicom would warn of some and let others pass.
     pydicom.config.settings.reading_validation_mode = pydicom.config.IGNORE
     wanted = ["SpecificCharacterSet", "Modality", *keywords]
-    with _reading(path, "", "content that is no DICOM", "a DICOM file"):
+    with reading(path, "", "content that is no DICOM", "a DICOM file"):
         try:
             meta = pydicom.filereader.read_file_meta_info(file)
             if str(meta.get("TransferSyntaxUID", "")) == _DEFLATED:
@@ -162,7 +167,7 @@ def _cut_short(dataset: "Dataset", keyword: str) -> bool:
 
 
 @contextmanager
-def _reading(
+def reading(
     path: Path | str, place: str, found: str = "a value that cannot be read", allowed: str = "what DICOM PS3.3 says"
 ) -> Iterator[None]:
     """Turn whatever pydicom raises over a damaged element into BadInput, and keep its warnings quiet."""
@@ -176,21 +181,23 @@ def _reading(
         raise bad(path, place, f"{found} ({type(error).__name__})", allowed) from error
 
 
-def _items(dataset: "Dataset", keyword: str) -> list["Dataset"]:
+def items_of(dataset: "Dataset", keyword: str) -> list["Dataset"]:
     """Return the items of a sequence, none where it is missing."""
     return list(dataset.get(keyword) or [])
 
 
-def _text(dataset: "Dataset", keyword: str) -> str:
+def text_of(dataset: "Dataset", keyword: str) -> str:
+    """Return an element as text, empty where it is missing."""
     return str(dataset.get(keyword) or "").strip()
 
 
-def _number(dataset: "Dataset", keyword: str) -> int | None:
+def whole_number(dataset: "Dataset", keyword: str) -> int | None:
+    """Return an element as a whole number, None where it is missing."""
     value = dataset.get(keyword)
     return None if value is None else int(value)
 
 
-def _numbers(dataset: "Dataset", keyword: str) -> Array:
+def decimal_numbers(dataset: "Dataset", keyword: str) -> Array:
     """Return a decimal string element as an array, empty where it is missing.
 
     Contours have so many numbers that they are taken from the bytes, past pydicom's objects for each.
@@ -204,16 +211,29 @@ def _numbers(dataset: "Dataset", keyword: str) -> Array:
     return np.atleast_1d(np.array([] if value is None else value, dtype=np.float64))
 
 
+def numbers_of(dataset: "Dataset", keyword: str) -> Array:
+    """Return an element of numbers, decimal strings or binary ones, as an array, empty where it is missing or empty."""
+    value = dataset.get(keyword)
+    return np.atleast_1d(np.array([] if value is None or value == "" else value, dtype=np.float64))
+
+
+def beams_of(dataset: "Dataset") -> Iterator[tuple[str, "Dataset", list["Dataset"]]]:
+    """Yield a plan's beams, photons, electrons and ions, each with its place in words and its control points."""
+    for kind, inner in (("Beam", "ControlPointSequence"), ("Ion Beam", "IonControlPointSequence")):
+        for i, beam in enumerate(items_of(dataset, f"{kind.replace(' ', '')}Sequence"), start=1):
+            yield f"{kind} Sequence item {i}", beam, items_of(beam, inner)
+
+
 def _control_points(dataset: "Dataset") -> Iterator[tuple[str, "Dataset"]]:
     """Yield the control points of a plan's beams, each with its place in words."""
-    for kind, inner in (("Beam", "ControlPointSequence"), ("Ion Beam", "IonControlPointSequence")):
-        for i, beam in enumerate(_items(dataset, f"{kind.replace(' ', '')}Sequence"), start=1):
-            for k, control_point in enumerate(_items(beam, inner), start=1):
-                yield f"{kind} Sequence item {i}, control point {k}", control_point
+    for place, _, control_points in beams_of(dataset):
+        for k, control_point in enumerate(control_points, start=1):
+            yield f"{place}, control point {k}", control_point
 
 
-def _position(path: Path | str, dataset: "Dataset", place: str) -> str | None:
-    position = _text(dataset, "PatientPosition")
+def position_of(path: Path | str, dataset: "Dataset", place: str) -> str | None:
+    """Return the patient position of a dataset, None for nothing. BadInput for none of the eight of `frames`."""
+    position = text_of(dataset, "PatientPosition")
     if position and position not in PATIENT_POSITIONS:
         raise bad(path, place, described(position), one_of(PATIENT_POSITIONS))
     return position or None
@@ -221,7 +241,10 @@ def _position(path: Path | str, dataset: "Dataset", place: str) -> str | None:
 
 def _external(path: Path | str, dataset: "Dataset", roi_name: str | None) -> tuple[int, str]:
     """Return number and name of the structure that is asked for."""
-    rois = [(_number(item, "ROINumber"), _text(item, "ROIName")) for item in _items(dataset, "StructureSetROISequence")]
+    rois = [
+        (whole_number(item, "ROINumber"), text_of(item, "ROIName"))
+        for item in items_of(dataset, "StructureSetROISequence")
+    ]
     names = {number: name for number, name in rois if number is not None}
     if not names:
         raise bad(path, "Structure Set ROI Sequence", "no structures", "a structure of type EXTERNAL")
@@ -230,9 +253,11 @@ def _external(path: Path | str, dataset: "Dataset", roi_name: str | None) -> tup
         place, allowed = "ROI Name", did_you_mean(roi_name, names.values())
         found = f"{len(numbers)} structures of the name '{printable(roi_name)}'"
     else:
-        observations = _items(dataset, "RTROIObservationsSequence")
+        observations = items_of(dataset, "RTROIObservationsSequence")
         external = {
-            _number(o, "ReferencedROINumber") for o in observations if _text(o, "RTROIInterpretedType") == "EXTERNAL"
+            whole_number(o, "ReferencedROINumber")
+            for o in observations
+            if text_of(o, "RTROIInterpretedType") == "EXTERNAL"
         }
         numbers = [number for number in names if number in external]
         place, found = "RT ROI Interpreted Type", f"{len(numbers)} structures of type EXTERNAL"
@@ -246,9 +271,9 @@ def _contours(path: Path | str, dataset: "Dataset", number: int, structure: str)
     """Return height and points of each contour of a structure, or raise all their faults at once."""
     items = [
         (f"ROI Contour Sequence item {i}, Contour Sequence item {k} ({structure})", contour)
-        for i, roi in enumerate(_items(dataset, "ROIContourSequence"), start=1)
-        if _number(roi, "ReferencedROINumber") == number
-        for k, contour in enumerate(_items(roi, "ContourSequence"), start=1)
+        for i, roi in enumerate(items_of(dataset, "ROIContourSequence"), start=1)
+        if whole_number(roi, "ReferencedROINumber") == number
+        for k, contour in enumerate(items_of(roi, "ContourSequence"), start=1)
     ]
     if not items:
         raise bad(path, "ROI Contour Sequence", f"no contours of {structure}", "contours on 2 slices or more")
@@ -273,13 +298,13 @@ def _contours(path: Path | str, dataset: "Dataset", number: int, structure: str)
 
 
 def _contour(path: Path | str, place: str, item: "Dataset") -> tuple[float, Array]:
-    with _reading(path, place):
-        kind, stated = _text(item, "ContourGeometricType"), _number(item, "NumberOfContourPoints")
+    with reading(path, place):
+        kind, stated = text_of(item, "ContourGeometricType"), whole_number(item, "NumberOfContourPoints")
     if kind not in _CLOSED:
         raise bad(path, f"{place}, Contour Geometric Type", described(kind), one_of(_CLOSED))
     place = f"{place}, Contour Data"
-    with _reading(path, place, "what is no list of numbers"):
-        values = _numbers(item, "ContourData")
+    with reading(path, place, "what is no list of numbers"):
+        values = decimal_numbers(item, "ContourData")
     count, rest = divmod(len(values), 3)
     if rest or count < 3 or count != (count if stated is None else stated):
         expected = "3 or more points of 3 numbers" if stated is None else f"{max(stated, 3)} points of 3 numbers"

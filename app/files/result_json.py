@@ -63,7 +63,7 @@ def result(assessment: Assessment, provenance: Provenance) -> Json:
         "provenance": provenance_values(provenance),
         "inputs": [list(line) for line in setup_lines(scene)],
         "options": asdict(assessment.options),
-        "readouts": {"gantry": _readout(room.gantry), "couch": _readout(room.couch.turntable)},
+        "readouts": {"gantry": readout_values(room.gantry), "couch": readout_values(room.couch.turntable)},
         "spans": _spans(assessment),
         "grid": _grid(assessment),
         "states": list(STATES),
@@ -98,7 +98,8 @@ def provenance_values(provenance: Provenance) -> Json:
     }
 
 
-def _readout(axis: Axis) -> Json | None:
+def readout_values(axis: Axis) -> Json | None:
+    """Return an axis's own scale as plain values for JSON, None where it shows IEC 61217."""
     readout = axis.readout
     if readout.is_iec():
         return None

@@ -204,7 +204,19 @@ def test_ctrl_c_leaves_nothing_half_written(setup_path: Path) -> None:
 
 
 def test_help_names_the_commands(capsys: pytest.CaptureFixture[str]) -> None:
-    assert run([]) == DONE
+    with pytest.raises(SystemExit) as ended:
+        run(["--help"])
+    assert ended.value.code == DONE
     printed = capsys.readouterr().out
-    assert "map" in printed
-    assert "pose" in printed
+    for command in ("open", "map", "pose", "check"):
+        assert f"    {command} " in printed
+
+
+@pytest.mark.parametrize(("arguments", "path"), [([], None), (["open", "a.setup.toml"], Path("a.setup.toml"))])
+def test_the_window_opens_without_a_command_and_on_a_set_up(
+    monkeypatch: pytest.MonkeyPatch, arguments: list[str], path: Path | None
+) -> None:
+    opened: list[Path | None] = []
+    monkeypatch.setattr("app.window.start.run_window", lambda wanted: opened.append(wanted) or DONE)
+    assert run(arguments) == DONE
+    assert opened == [path]

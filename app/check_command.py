@@ -1,0 +1,122 @@
+"""`wideberth check`: the fields of a plan, and the moves between them, against a set-up."""
+
+import argparse
+import datetime
+import sys
+from pathlib import Path
+from typing import TYPE_CHECKING, Final
+
+from app.cautions import CAUTIONS
+from app.command_options import add_proof_options
+from app.terminal import TerminalProgress
+from geometry.errors import BadInput, Fault, GeometryError
+
+if TYPE_CHECKING:
+    from app.files.provenance import Provenance
+    from geometry.assess import Options
+    from geometry.treatment import CheckReport, PlanField
+
+PERMITTED: Final = 0
+NOT_PERMITTED: Final = 1
+
+
+def add_check(parser: argparse.ArgumentParser) -> None:
+    """Add what `check` takes, and the command itself."""
+    parser.set_defaults(command=_check)
+    parser.add_argument("setup", metavar="SETUP", type=Path, help="set-up file, *.setup.toml")
+    parser.add_argument(
+        "fields", metavar="FIELDS", type=Path, help="RT Plan or RT Ion Plan (.dcm), or a .csv of fields"
+    )
+    parser.add_argument("--out", metavar="FILE", type=Path, action="append", default=[], help="the report as .json")
+    parser.add_argument("--json", action="store_true", help="as JSON in place of the table")
+    add_proof_options(parser)
+    parser.add_argument(
+        "--fit",
+        metavar="FIELD=WHAT",
+        action="append",
+        default=[],
+        help="what is fitted for a field (its name, its number, or 'all'): accessories and arm positions between "
+        "semicolons, 'none', or nothing for what the set-up has",
+    )
+    parser.add_argument(
+        "--table",
+        choices=("both", "plan", "setup"),
+        default="both",
+        help="whose table positions count where plan and set-up differ; both: each field must be clear with both",
+    )
+    parser.add_argument("--quiet", action="store_true", help="no progress, no table")
+
+
+def read_fields(path: Path) -> "tuple[PlanField, ...]":
+    """Return the fields of a list or a plan, told apart by the suffix .csv. Raises BadInput."""
+    if path.suffix.lower() == ".csv":
+        from app.files.fields_csv import read_field_rows  # noqa: PLC0415
+
+        return read_field_rows(path)
+    from app.files.plan_dicom import read_plan_fields  # noqa: PLC0415
+
+    return read_plan_fields(path)
+
+
+def _check(chosen: argparse.Namespace) -> int:
+    # Kept from `--help` and `--version`, which need not wait for numba.
+    from app.files.check_exports import check_report_path, write_check  # noqa: PLC0415
+    from app.files.check_json import check_json  # noqa: PLC0415
+    from app.files.provenance import provenance_of  # noqa: PLC0415
+    from geometry.assess import Options  # noqa: PLC0415
+
+    for path in chosen.out:
+        check_report_path(path)
+    options = Options(
+        edge_deg=chosen.edge,
+        gantry_tolerance_deg=chosen.gantry_tolerance,
+        couch_tolerance_deg=chosen.couch_tolerance,
+    )
+    with TerminalProgress(quiet=chosen.quiet) as progress:
+        report = _report(chosen, options, progress)
+        provenance = provenance_of(report.scene, options, datetime.datetime.now().astimezone().date())
+        for path in chosen.out:
+            progress.report(1.0, f"writing {path.name}")
+            write_check(report, provenance, path)
+    if chosen.json:
+        sys.stdout.write(check_json(report, provenance) + "\n")
+    elif not chosen.quiet:
+        _show(report, provenance, chosen.out)
+    return PERMITTED if report.permitted else NOT_PERMITTED
+
+
+def _report(chosen: argparse.Namespace, options: "Options", progress: TerminalProgress) -> "CheckReport":
+    from app.files.setup_file import read_setup  # noqa: PLC0415
+    from app.plan_check import Choices, check_plan  # noqa: PLC0415
+    from geometry.prepare import prepare_path_kernels  # noqa: PLC0415
+    from geometry.scene import with_required  # noqa: PLC0415
+
+    choices = Choices(_fits(chosen.fit), chosen.table)
+    setup = read_setup(chosen.setup)
+    fields = read_fields(chosen.fields)
+    if chosen.required is not None:
+        setup = with_required(setup, chosen.required, "given on the command line for every pair")
+    prepare_path_kernels(progress)
+    try:
+        return check_plan(setup, fields, options, choices, str(chosen.fields), progress)
+    except GeometryError as error:
+        raise BadInput([Fault(str(chosen.setup), "", str(error), "solids that can be built")]) from error
+
+
+def _fits(said: list[str]) -> dict[str, tuple[str, ...]]:
+    found = {}
+    for text in said:
+        field, sign, what = text.partition("=")
+        if not sign or not field.strip():
+            raise BadInput([Fault("command line", "--fit", f"'{text[:60]}'", "FIELD=WHAT, as '2=cone'")])
+        found[field.strip()] = tuple(part.strip() for part in what.split(";") if part.strip())
+    return found
+
+
+def _show(report: "CheckReport", provenance: "Provenance", written: list[Path]) -> None:
+    from app.check_table import show_report  # noqa: PLC0415
+
+    show_report(report, provenance)
+    for path in written:
+        sys.stdout.write(f"Wrote {path}\n")
+    sys.stdout.write(f"{CAUTIONS[0]}\n")

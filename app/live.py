@@ -1,0 +1,74 @@
+"""What the window shows of a set-up, in stages: pieces at once, a coarse map, the exact one, at last the proof."""
+
+import time
+from dataclasses import dataclass, replace
+from typing import Final
+
+from geometry.assess import Assessment, Options, assess_map, exact_map
+from geometry.direction_regions import Share, share_of
+from geometry.progress import Progress, Silent, stop_if_cancelled
+from geometry.scene import Scene, build_scene
+from geometry.setup import Setup
+from geometry.sweep import ClearanceMap
+
+# What a coarse map may cost while the user's hand moves, s, and the steps to choose from, deg.
+_COARSE_S: Final = (0.03, 0.11)
+_STEPS_DEG: Final = (1.0, 2.0, 3.0, 4.0, 6.0)
+
+
+@dataclass(frozen=True, eq=False)
+class Stage:
+    """How far a set-up is looked through.
+
+    `map` is the finest so far; `assessment`, and `share` of the sphere with it, are there once all is proved.
+    """
+
+    setup: Setup
+    scene: Scene
+    map: ClearanceMap | None = None
+    is_exact: bool = False
+    assessment: Assessment | None = None
+    share: Share | None = None
+
+
+class Coarseness:
+    """The step of coarse maps, which follows from how long the last ones took on this machine."""
+
+    def __init__(self) -> None:
+        self.step_deg = 2.0
+
+    def learn(self, seconds: float) -> None:
+        """Take the next step up or down where a coarse map took too long, or hardly any time."""
+        place = _STEPS_DEG.index(self.step_deg)
+        if seconds > _COARSE_S[1]:
+            place = min(place + 1, len(_STEPS_DEG) - 1)
+        elif seconds < _COARSE_S[0]:
+            place = max(place - 1, 0)
+        self.step_deg = _STEPS_DEG[place]
+
+
+def first_stage(setup: Setup, coarseness: Coarseness) -> Stage:
+    """Return the scene with a coarse map: what can be seen within the blink of an eye. GeometryError."""
+    scene = build_scene(setup)
+    step_deg = coarseness.step_deg
+    start = time.monotonic()
+    # Not to be cancelled: what follows a hand must show something, however fast the hand moves.
+    coarse = exact_map(scene, Options(gantry_step_deg=step_deg, couch_step_deg=step_deg), Silent())
+    coarseness.learn(time.monotonic() - start)
+    return Stage(setup, scene, coarse)
+
+
+def exact_stage(first: Stage, options: Options, progress: Progress) -> Stage:
+    """Return the stage with the exact map. Raises Cancelled."""
+    stop_if_cancelled(progress)
+    return replace(first, map=exact_map(first.scene, options, progress), is_exact=True)
+
+
+def proved_stage(exact: Stage, options: Options, progress: Progress) -> Stage:
+    """Return the stage with everything proved. Raises Cancelled."""
+    if exact.map is None:
+        raise ValueError("the exact map comes before the proof")
+    assessment = assess_map(exact.map, options, progress)
+    # Computed here, on the worker's time; the chart asks for it at once.
+    _ = assessment.permitted_region
+    return replace(exact, assessment=assessment, share=share_of(assessment))

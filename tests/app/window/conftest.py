@@ -1,0 +1,35 @@
+"""What every test of the window needs: settings and user folders of its own, and nothing left afterwards."""
+
+import threading
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+from PySide6.QtCore import QTimer
+from pytestqt.qtbot import QtBot
+
+from app.window.main_window import MainWindow
+from tests.window_driver import new_window
+
+
+@pytest.fixture
+def own_folders(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
+    """Keep recent files, side files and settings away from the user's."""
+    for variable in ("XDG_CONFIG_HOME", "XDG_DATA_HOME", "LOCALAPPDATA", "APPDATA", "HOME"):
+        monkeypatch.setenv(variable, str(tmp_path / "user"))
+    return tmp_path
+
+
+@pytest.fixture
+def window(own_folders: Path, qtbot: QtBot) -> Iterator[MainWindow]:  # noqa: ARG001 - there has to be an application
+    """Return the main window, shown; closed afterwards, with no thread, timer or process left."""
+    made = new_window(own_folders)
+    yield made
+    if made.desk.session is not None:
+        made.desk.session.replace_document(made.desk.session.document)
+    made.close()
+    left = [thread.name for thread in threading.enumerate() if thread.name.startswith("wideberth")]
+    assert not left
+    going = [(type(timer.parent()).__name__, timer.interval()) for timer in made.findChildren(QTimer) if timer.isActive()]
+    assert not going
+    made.deleteLater()
