@@ -14,10 +14,12 @@ from geometry.errors import BadInput, Fault, GeometryError
 if TYPE_CHECKING:
     from app.files.provenance import Provenance
     from geometry.assess import Options
-    from geometry.treatment import CheckReport, PlanField
+    from geometry.treatment.data import CheckReport, PlanField
 
 PERMITTED: Final = 0
 NOT_PERMITTED: Final = 1
+
+OUT_SUFFIXES: Final = ".pdf dry-run sheet, .xlsx workbook, .json all of it"
 
 
 def add_check(parser: argparse.ArgumentParser) -> None:
@@ -27,7 +29,7 @@ def add_check(parser: argparse.ArgumentParser) -> None:
     parser.add_argument(
         "fields", metavar="FIELDS", type=Path, help="RT Plan or RT Ion Plan (.dcm), or a .csv of fields"
     )
-    parser.add_argument("--out", metavar="FILE", type=Path, action="append", default=[], help="the report as .json")
+    parser.add_argument("--out", metavar="FILE", type=Path, action="append", default=[], help=OUT_SUFFIXES)
     parser.add_argument("--json", action="store_true", help="as JSON in place of the table")
     add_proof_options(parser)
     parser.add_argument(
@@ -44,6 +46,7 @@ def add_check(parser: argparse.ArgumentParser) -> None:
         default="both",
         help="whose table positions count where plan and set-up differ; both: each field must be clear with both",
     )
+    parser.add_argument("--paper", choices=("a4", "letter"), default="a4", help="of the dry-run sheet, a4")
     parser.add_argument("--quiet", action="store_true", help="no progress, no table")
 
 
@@ -60,7 +63,7 @@ def read_fields(path: Path) -> "tuple[PlanField, ...]":
 
 def _check(chosen: argparse.Namespace) -> int:
     # Kept from `--help` and `--version`, which need not wait for numba.
-    from app.files.check_exports import check_report_path, write_check  # noqa: PLC0415
+    from app.files.check_exports import check_report_path  # noqa: PLC0415
     from app.files.check_json import check_json  # noqa: PLC0415
     from app.files.provenance import provenance_of  # noqa: PLC0415
     from geometry.assess import Options  # noqa: PLC0415
@@ -75,9 +78,8 @@ def _check(chosen: argparse.Namespace) -> int:
     with TerminalProgress(quiet=chosen.quiet) as progress:
         report = _report(chosen, options, progress)
         provenance = provenance_of(report.scene, options, datetime.datetime.now().astimezone().date())
-        for path in chosen.out:
-            progress.report(1.0, f"writing {path.name}")
-            write_check(report, provenance, path)
+        if chosen.out:
+            _write(chosen, report, provenance, progress)
     if chosen.json:
         sys.stdout.write(check_json(report, provenance) + "\n")
     elif not chosen.quiet:
@@ -87,7 +89,7 @@ def _check(chosen: argparse.Namespace) -> int:
 
 def _report(chosen: argparse.Namespace, options: "Options", progress: TerminalProgress) -> "CheckReport":
     from app.files.setup_file import read_setup  # noqa: PLC0415
-    from app.plan_check import Choices, check_plan  # noqa: PLC0415
+    from app.plan.check import Choices, check_plan  # noqa: PLC0415
     from geometry.prepare import prepare_path_kernels  # noqa: PLC0415
     from geometry.scene import with_required  # noqa: PLC0415
 
@@ -101,6 +103,23 @@ def _report(chosen: argparse.Namespace, options: "Options", progress: TerminalPr
         return check_plan(setup, fields, options, choices, str(chosen.fields), progress)
     except GeometryError as error:
         raise BadInput([Fault(str(chosen.setup), "", str(error), "solids that can be built")]) from error
+
+
+def _write(
+    chosen: argparse.Namespace, report: "CheckReport", provenance: "Provenance", progress: TerminalProgress
+) -> None:
+    from app.files.check_exports import CheckExport, write_check  # noqa: PLC0415
+    from app.files.gaps_csv import read_kept_gaps  # noqa: PLC0415
+    from app.plan.gaps import compare_gaps  # noqa: PLC0415
+    from geometry.assess import assess  # noqa: PLC0415
+
+    gaps = compare_gaps(read_kept_gaps(chosen.setup), report, provenance.fingerprint)
+    with_chart = any(path.suffix.lower() == ".pdf" for path in chosen.out)
+    assessment = assess(report.setup, report.options, progress) if with_chart else None
+    export = CheckExport(report, provenance, assessment, gaps, "Letter" if chosen.paper == "letter" else "A4")
+    for path in chosen.out:
+        progress.report(1.0, f"writing {path.name}")
+        write_check(export, path)
 
 
 def _fits(said: list[str]) -> dict[str, tuple[str, ...]]:

@@ -13,7 +13,7 @@ from app.files.provenance import Provenance
 from app.files.readings import reading_deg
 from geometry.paths import Approach
 from geometry.states import State
-from geometry.treatment import CheckReport, FieldCheck, MoveCheck
+from geometry.treatment.data import CheckReport, FieldCheck, MoveCheck
 
 # Where no terminal tells how wide it is.
 _WIDTH: Final = 140

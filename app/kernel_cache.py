@@ -41,7 +41,7 @@ def kernels_digest() -> str:
     go on with the machine code of the older ones; a folder of its own for each state of the sources prevents that.
     """
     digest = hashlib.sha256(importlib.metadata.version("numba").encode())
-    for source in sorted(Path(geometry.__file__).parent.glob("*kernel*.py")):
+    for source in sorted(Path(geometry.__file__).parent.rglob("*kernel*.py")):
         digest.update(source.read_bytes())
     return digest.hexdigest()[:16]
 

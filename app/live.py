@@ -5,7 +5,7 @@ from dataclasses import dataclass, replace
 from typing import Final
 
 from geometry.assess import Assessment, Options, assess_map, exact_map
-from geometry.direction_regions import Share, share_of
+from geometry.directions.regions import Share, share_of
 from geometry.progress import Progress, Silent, stop_if_cancelled
 from geometry.scene import Scene, build_scene
 from geometry.setup import Setup

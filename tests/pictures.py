@@ -48,6 +48,26 @@ def _discs(window: object) -> None:
     window.workspace.right_tabs.setCurrentIndex(1)  # type: ignore[attr-defined]
 
 
+_PLAN = """\
+field,gantry_from_deg,gantry_to_deg,direction,couch_from_deg,couch_to_deg,collimator_deg,fitted
+Coplanar arc,181,179,CW,0,0,10,
+Oblique arc,30,179,CW,330,330,350,
+Vertex arc,0,120,CW,270,270,90,
+Left beam,90,90,,30,30,0,
+"""
+
+
+def _plan(window: object) -> None:
+    with tempfile.TemporaryDirectory() as folder:
+        path = Path(folder) / "invented_plan.csv"
+        path.write_text(_PLAN, encoding="utf-8")
+        window.open_plan(path)  # type: ignore[attr-defined]
+        from tests.window_driver import settle
+
+        settle(window)  # type: ignore[arg-type]
+    window.workspace.fields.choose_field(1)  # type: ignore[attr-defined]
+
+
 SHOTS = (
     Shot("start"),
     Shot("window", "c_arm_wide/head", _vertex, of_readme=True),
@@ -56,6 +76,7 @@ SHOTS = (
     Shot("directions", "c_arm_wide/head", _discs),
     Shot("dark", "c_arm_close/breast", _vertex, theme="dark"),
     Shot("small", "particle_snout/head", _vertex, size=(1366, 768)),
+    Shot("plan", "c_arm_wide/head", _plan),
     Shot("bore", "closed_bore/prostate", size=(1366, 768)),
     Shot("cobalt", "cobalt/neck", _blocked, size=(1366, 768)),
     Shot("start_dark", theme="dark", size=(1366, 768)),

@@ -1,4 +1,4 @@
-"""A process of its own that opens the window on a real screen and saves what the screen shows: see `test_on_a_screen`."""
+"""A process of its own that opens the window on a real screen and saves what the screen shows."""
 
 import sys
 import tempfile

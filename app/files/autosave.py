@@ -16,7 +16,7 @@ from typing import Any, Final
 
 import platformdirs
 
-from app.document import Document, Source
+from app.document.document import Document, Source
 from app.files.atomic import write_atomically
 from app.files.input_file import checked_file
 from app.files.setup_limits import EDGE_DEG, STEP_DEG, TOLERANCE_DEG

@@ -38,8 +38,8 @@ from app.files.setup_lines import setup_lines
 from geometry.legs import Point
 from geometry.paths import Approach
 from geometry.scene import Scene
-from geometry.treatment import BetterOrder, CheckReport, FieldCheck, MoveCheck, MoveStep, part_labels
-from geometry.treatment_stages import arms_of
+from geometry.treatment.data import BetterOrder, CheckReport, FieldCheck, MoveCheck, MoveStep, part_labels
+from geometry.treatment.stages import arms_of
 
 CHECK_FORMAT: Final = 1
 # Of a proved bound, mm.

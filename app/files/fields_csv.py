@@ -24,7 +24,7 @@ from app.files.turns import snapped_deg
 from app.files.wording import described, did_you_mean, one_of, printable
 from geometry.errors import BadInput, Fault
 from geometry.legs import Point
-from geometry.treatment import PlanField
+from geometry.treatment.data import PlanField
 
 COLUMNS: Final = (
     "field",

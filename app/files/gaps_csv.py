@@ -15,14 +15,14 @@ from collections.abc import Iterable
 from pathlib import Path
 from typing import Final
 
-from app.dry_run import DryRun
-from app.dry_run_words import PLACE_DIGITS
 from app.files.delimited import Cell, write_table
 from app.files.input_file import bad
 from app.files.readings import reading_deg, rounded_down
 from app.files.typed_table import read_table
 from app.files.wording import described, printable
-from app.gaps import MeasuredGap, places_to_measure
+from app.plan.dry_run import DryRun
+from app.plan.dry_run_words import PLACE_DIGITS
+from app.plan.gaps import MeasuredGap, places_to_measure
 from geometry.errors import BadInput, Fault
 
 COLUMNS: Final = ("field", "gantry_deg", "couch_deg", "measured_mm", "by", "on", "fingerprint")
@@ -88,6 +88,11 @@ def keep_gaps(setup_path: Path, gaps: Iterable[MeasuredGap], fingerprint: str = 
         raise bad(path, "", f"{len(kept)} gaps", f"at most {MOST_GAPS}")
     write_table(path, COLUMNS, [_cells(gap) for gap in kept])
     return kept
+
+
+def replace_gaps(setup_path: Path, gaps: Iterable[MeasuredGap]) -> None:
+    """Keep these gaps with a set-up, and no others. Raises BadInput where the file beside it cannot be written."""
+    write_table(gaps_path(setup_path), COLUMNS, [_cells(gap) for gap in gaps])
 
 
 def write_gaps_template(rows: DryRun, fingerprint: str, path: Path) -> None:

@@ -27,7 +27,7 @@ from app.files.turns import snapped_deg, turned
 from app.files.wording import described, one_of, printable
 from geometry.errors import BadInput, Fault
 from geometry.outlines import LARGEST_MM
-from geometry.treatment import PlanField
+from geometry.treatment.data import PlanField
 
 MOST_BEAMS: Final = 500
 MOST_CONTROL_POINTS: Final = 100_000

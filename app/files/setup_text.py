@@ -10,9 +10,9 @@ import numpy as np
 import tomlkit
 from numpy.typing import NDArray
 
-from app.device_edits import device_position_mm
-from app.document import Document
-from app.edits import FIELDS
+from app.document.device_edits import device_position_mm
+from app.document.document import Document
+from app.document.edits import FIELDS
 from app.files.required_keys import ROOM_MODEL
 from app.files.setup_references import move_references, parsed
 from app.files.toml_edits import Place, Value, with_item, with_value, without_item, without_value

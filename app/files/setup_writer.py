@@ -6,8 +6,8 @@ from collections.abc import Iterator
 from dataclasses import fields, replace
 from pathlib import Path
 
-from app.device_edits import device_position_mm
-from app.document import Document, source_of, stamp_of
+from app.document.device_edits import device_position_mm
+from app.document.document import Document, source_of, stamp_of
 from app.files.atomic import write_atomically
 from app.files.fingerprint import fingerprint
 from app.files.setup_references import read_as

@@ -11,7 +11,7 @@ from app.files.readings import own_scales
 from app.files.sheet_page import INK, SMALL, Pages, line_mm
 from geometry.assess import Assessment
 from geometry.states import State
-from geometry.treatment import CheckReport, FieldCheck
+from geometry.treatment.data import CheckReport, FieldCheck
 
 _DOWN_MM: Final = 66.0
 _LEAST_DOWN_MM: Final = 50.0

@@ -6,7 +6,6 @@ from typing import BinaryIO, Final
 
 from matplotlib.backends.backend_pdf import PdfPages
 
-from app.dry_run import dry_run
 from app.files.atomic import write_atomically
 from app.files.chart_style import drawing_style, pdf_metadata
 from app.files.provenance import Provenance
@@ -16,9 +15,10 @@ from app.files.sheet_gaps import add_gaps
 from app.files.sheet_head import add_checks, add_end, add_feet, add_head, add_remarks
 from app.files.sheet_page import Page, Pages, Paper
 from app.files.sheet_picture import add_picture
-from app.gaps import GapRow
+from app.plan.dry_run import dry_run
+from app.plan.gaps import GapRow
 from geometry.assess import Assessment
-from geometry.treatment import CheckReport
+from geometry.treatment.data import CheckReport
 
 _DOTS_PER_INCH: Final = 300
 

@@ -8,17 +8,17 @@ from typing import BinaryIO, Final
 from openpyxl import Workbook
 from openpyxl.utils import get_column_letter
 
-from app.dry_run import DO_NOT_RUN, FieldRow, MoveRow, dry_run
-from app.dry_run_places import Place
-from app.dry_run_words import PLACE_DIGITS, angle_text, own_text
 from app.files.atomic import write_atomically
 from app.files.provenance import Provenance
 from app.files.readings import OwnScales, rounded_down
 from app.files.workbook_archive import save_workbook
 from app.files.workbook_cells import HEADER_FILL, INK, PALE_INK, WHITE, Look, Value, cell, landscape, running_heads
 from app.files.workbook_story import add_story
-from app.gaps import GapRow
-from geometry.treatment import CheckReport
+from app.plan.dry_run import DO_NOT_RUN, FieldRow, MoveRow, dry_run
+from app.plan.dry_run_places import Place
+from app.plan.dry_run_words import PLACE_DIGITS, angle_text, own_text
+from app.plan.gaps import GapRow
+from geometry.treatment.data import CheckReport
 
 FIELDS: Final = "Dry run"
 MOVES: Final = "Moves"

@@ -5,14 +5,15 @@ from dataclasses import dataclass
 import shapely
 from PySide6.QtCore import QObject, QTimer, Signal
 
-from app.document import Document
-from app.fields import Edit
+from app.document.document import Document
+from app.document.fields import Edit
+from app.document.session import Session
 from app.jobs import Jobs
 from app.live import Stage
-from app.session import Session
 from app.window.follower import Follower
 from geometry.assess import Assessment, Pose, exact_pose, proved_pose
 from geometry.errors import GeometryError
+from geometry.scene import Scene
 from geometry.spans import Span
 
 
@@ -31,7 +32,8 @@ class Desk(QObject):
     `opened` (Document): another document; `closed`: none any more. `changed` (Document): the document or whether it is
     saved. `staged` (Stage). `turned` (gantry, couch): the pose looked at is another; `posed` (Pose): what is known of
     it, PERMITTED before the proof meaning that only the proof is still to come. `kept_changed` (Kept or None).
-    `refused` (text): an edit that is not allowed, or a set-up that cannot be built.
+    `refused` (text): an edit that is not allowed, or a set-up that cannot be built. `scene_shown` (Scene): the room is
+    another one to look at: that of the latest stage or, while `show_instead` says so, of a field or a preview.
     """
 
     opened = Signal(object)
@@ -42,6 +44,7 @@ class Desk(QObject):
     posed = Signal(object)
     kept_changed = Signal(object)
     refused = Signal(str)
+    scene_shown = Signal(object)
 
     def __init__(self, jobs: Jobs, parent: QObject | None = None) -> None:
         super().__init__(parent)
@@ -49,6 +52,7 @@ class Desk(QObject):
         self.session: Session | None = None
         self.stage: Stage | None = None
         self.pose: Pose | None = None
+        self._instead: Scene | None = None
         self.kept: Kept | None = None
         self.gantry_deg = 0.0
         self.couch_deg = 0.0
@@ -72,6 +76,24 @@ class Desk(QObject):
         """All that is known of the set-up as it is now; None while something is still being computed."""
         return self.stage.assessment if self.stage is not None else None
 
+    @property
+    def scene(self) -> Scene | None:
+        """The room that is looked at, to which `pose` belongs."""
+        return self._instead or (self.stage.scene if self.stage is not None else None)
+
+    @property
+    def is_own_scene(self) -> bool:
+        """Whether the room that is looked at is that of the document's set-up."""
+        return self._instead is None
+
+    def show_instead(self, scene: Scene | None) -> None:
+        """Look at another room than the document's, as a field has it; with None at the document's again."""
+        if scene is not self._instead:
+            self._instead = scene
+            if self.scene is not None:
+                self.scene_shown.emit(self.scene)
+            self._look_at_pose()
+
     def open(self, document: Document, *, saved: bool = True) -> None:
         """Work on another document."""
         self.session = Session(document, saved=saved)
@@ -79,6 +101,7 @@ class Desk(QObject):
         self._followed = None
         self.stage = None
         self.pose = None
+        self._instead = None
         self.keep(None)
         turntable = document.setup.room.couch.turntable
         gantry = document.setup.room.gantry
@@ -154,14 +177,18 @@ class Desk(QObject):
 
     def _on_stage(self, stage: Stage) -> None:
         self.stage = stage
+        if self._instead is None:
+            self.scene_shown.emit(stage.scene)
         self.staged.emit(stage)
         self._look_at_pose()
 
     def _look_at_pose(self) -> None:
-        if self.stage is None:
+        scene = self.scene
+        if scene is None:
             return
-        pose = exact_pose(self.stage.scene, self.gantry_deg, self.couch_deg)
-        self.pose = proved_pose(self.stage.assessment, pose) if self.stage.assessment is not None else pose
+        pose = exact_pose(scene, self.gantry_deg, self.couch_deg)
+        assessment = self.assessment if self.is_own_scene else None
+        self.pose = pose if assessment is None else proved_pose(assessment, pose)
         self.posed.emit(self.pose)
 
 

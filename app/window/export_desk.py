@@ -12,13 +12,16 @@ from PySide6.QtPrintSupport import QPrintDialog, QPrinter
 from PySide6.QtWidgets import QFileDialog, QWidget
 
 from app.files.atomic import write_atomically
+from app.files.check_exports import CheckExport, Paper, check_report_path, write_check
 from app.files.exports import check_grid_path, check_map_path, check_pose_path, write_grid, write_map, write_pose
 from app.files.provenance import Provenance, provenance_of
 from app.jobs import Job
+from app.plan.gaps import GapRow
 from app.window.captions import captioned, picture_lines
 from app.window.desk import Desk
 from geometry.assess import Assessment, Options
 from geometry.errors import WideberthError
+from geometry.treatment.data import CheckReport
 
 LANE = "export"
 _PICTURE_SIZE: Final = (1600, 1100)
@@ -29,6 +32,12 @@ _MAPS: Final = {
     "Permitted-angle table (*.csv)": ".csv",
     "Angle chart as a page (*.pdf)": ".pdf",
     "Angle chart as a picture (*.png)": ".png",
+    "Everything, for programs (*.json)": ".json",
+}
+_SHEETS: Final = {
+    "Dry-run sheet, A4 (*.pdf)": ".pdf",
+    "Dry-run sheet, Letter (*.pdf)": ".pdf",
+    "Workbook (*.xlsx)": ".xlsx",
     "Everything, for programs (*.json)": ".json",
 }
 _POSES: Final = {"glTF (*.glb)": ".glb", "Polygons (*.ply)": ".ply", "Triangles (*.stl)": ".stl"}
@@ -84,6 +93,15 @@ class ExportDesk(QObject):
             content = png_of(captioned(picture(*_PICTURE_SIZE), lines))
             self._start(path, _any_path, lambda: write_atomically(path, lambda stream: stream.write(content)))
 
+    def write_sheet(self, report: CheckReport, gaps: tuple[GapRow, ...]) -> None:
+        """Ask for a file and write the dry-run sheet of a checked plan, or the same as a workbook or for programs."""
+        path, kind = self._asked_kind("The dry-run sheet", _SHEETS, "dry run")
+        if path is not None:
+            provenance = provenance_of(report.scene, report.options, _today())
+            paper: Paper = "Letter" if "Letter" in kind else "A4"
+            export = CheckExport(report, provenance, self._desk.assessment, gaps, paper)
+            self._start(path, check_report_path, lambda: write_check(export, path))
+
     def print_chart(self) -> None:
         """Ask for a printer and print the page that `map` writes as a chart."""
         assessment = self._desk.assessment
@@ -109,9 +127,13 @@ class ExportDesk(QObject):
             paint_page(page, printer)
 
     def _asked(self, title: str, kinds: dict[str, str], what: str) -> Path | None:
+        return self._asked_kind(title, kinds, what)[0]
+
+    def _asked_kind(self, title: str, kinds: dict[str, str], what: str) -> tuple[Path | None, str]:
+        """Ask for a file and its kind; None where the person would rather not."""
         document = self._desk.document
         if document is None:
-            return None
+            return None, ""
         folder = document.path.parent if document.path is not None else Path.home()
         stem = document.path.name.removesuffix(".setup.toml") if document.path is not None else "set-up"
         first = next(iter(kinds.values()))
@@ -119,9 +141,10 @@ class ExportDesk(QObject):
             self._window, title, str(folder / f"{stem} {what}{first}"), ";;".join(kinds)
         )
         if not chosen:
-            return None
+            return None, ""
         path = Path(chosen)
-        return path if path.suffix.lower() in kinds.values() else path.with_name(path.name + kinds.get(kind, first))
+        known = path.suffix.lower() in kinds.values()
+        return path if known else path.with_name(path.name + kinds.get(kind, first)), kind
 
     def _start(self, path: Path, check: Callable[[Path], None], write: Callable[[], None]) -> None:
         try:

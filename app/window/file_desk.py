@@ -9,7 +9,7 @@ from typing import Any, Final
 from PySide6.QtCore import QObject, QTimer, Signal
 from PySide6.QtWidgets import QFileDialog, QMessageBox, QWidget
 
-from app.document import Document, new_document, open_document
+from app.document.document import Document, new_document, open_document
 from app.files.autosave import Autosave, Pending, Recovery, discard, pending_recovery
 from app.files.setup_writer import ChangedOnDisk, save_setup
 from app.jobs import Job
@@ -33,13 +33,15 @@ def _nothing() -> None:
 
 
 class FileDesk(QObject):
-    """Keeps the file of the document. `told` (text) says what was done; `about_to_save` comes before anything is asked.
+    """Keeps the file of the document.
 
-    What takes time is begun and returned from; what is to come after it is handed over as a function.
+    `told` (text) says what was done; `about_to_save` comes before anything is asked, `saved` once the document has its
+    file. What takes time is begun and returned from; what is to come after it is handed over as a function.
     """
 
     told = Signal(str)
     about_to_save = Signal()
+    saved = Signal()
 
     def __init__(self, desk: Desk, window: QWidget) -> None:
         super().__init__(window)
@@ -177,6 +179,7 @@ class FileDesk(QObject):
             self._start("", self._side_file.remove, to_the_end=True)
             remember_file(path)
             self.told.emit(f"Saved {path}")
+            self.saved.emit()
             then()
 
         def failed(error: Exception) -> None:

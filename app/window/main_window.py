@@ -4,9 +4,9 @@ from pathlib import Path
 
 from PySide6.QtCore import QTimer
 from PySide6.QtGui import QCloseEvent, QDragEnterEvent, QDropEvent, QGuiApplication
-from PySide6.QtWidgets import QApplication, QLabel, QMainWindow, QProgressBar, QStackedWidget
+from PySide6.QtWidgets import QApplication, QFileDialog, QLabel, QMainWindow, QProgressBar, QStackedWidget
 
-from app.document import Document
+from app.document.document import Document
 from app.jobs import UNKNOWN, Jobs
 from app.recent import recent_files
 from app.samples import sample_rooms, samples_folder
@@ -14,9 +14,11 @@ from app.window.cautions_dialog import CautionsDialog
 from app.window.change_note import ChangeNote
 from app.window.desk import Desk
 from app.window.export_desk import ExportDesk
+from app.window.fields.fields_desk import FieldsDesk
+from app.window.fields.gap_keeper import GapKeeper
 from app.window.file_desk import FileDesk
 from app.window.menus import Menus
-from app.window.remedy_desk import RemedyDesk
+from app.window.remedies.remedy_desk import RemedyDesk
 from app.window.settings import WindowSettings
 from app.window.shading_desk import ShadingDesk
 from app.window.start_screen import StartScreen
@@ -24,6 +26,8 @@ from app.window.theme import palette_of, theme_for
 from app.window.workspace import Workspace
 
 _SUFFIX = ".setup.toml"
+_PLAN_SUFFIXES = (".dcm", ".csv")
+_PLAN_FILTER = "RT Plans and lists of fields (*.dcm *.csv);;All files (*)"
 _TOLD_MS = 15_000
 
 
@@ -42,6 +46,9 @@ class MainWindow(QMainWindow):
         self.shading = ShadingDesk(self.desk, self.workspace, self)
         self.remedies = RemedyDesk(self.desk, self.workspace, self)
         self.change_note = ChangeNote(self.desk, self)
+        curve = self.workspace.time_curve
+        self.fields = FieldsDesk(self.desk, self.workspace.fields, curve, self.exports.write_sheet, self)
+        self.gaps = GapKeeper(self.desk, self.fields, self)
         self.pages = QStackedWidget()
         self.pages.addWidget(self.start_screen)
         self.pages.addWidget(self.workspace)
@@ -78,8 +85,15 @@ class MainWindow(QMainWindow):
             pointed.connect(self.show_pointed)
         self.change_note.noted.connect(self.workspace.setup_panel.set_change_note)
         self.change_note.noted.connect(self.tell)
-        self.files.about_to_save.connect(self.workspace.setup_panel.commit)
-        for source in (self.files, self.exports):
+        for panel in (self.workspace.setup_panel, self.workspace.fields):
+            self.files.about_to_save.connect(panel.commit)
+        self.files.saved.connect(self.gaps.keep)
+        self.fields.fields_changed.connect(self.workspace.show_fields)
+        self.fields.directions_changed.connect(self.workspace.discs.show_fields)
+        self.fields.chosen_changed.connect(self.shading.set_field)
+        self.fields.scene_wanted.connect(self.desk.show_instead)
+        self.workspace.fields.open_wanted.connect(self.browse_plan)
+        for source in (self.files, self.exports, self.fields, self.gaps):
             source.told.connect(self.tell)
         self.exports.failed.connect(self.tell)
 
@@ -106,6 +120,21 @@ class MainWindow(QMainWindow):
         for widget in (self.start_screen, self.workspace):
             widget.set_theme(theme)
         self.menus.show_theme(choice)
+
+    def browse_plan(self) -> None:
+        """Ask for a plan, or a list of fields, and check it."""
+        document = self.desk.document
+        folder = str(document.path.parent if document is not None and document.path is not None else Path.home())
+        chosen, _ = QFileDialog.getOpenFileName(self, "Open a plan", folder, _PLAN_FILTER)
+        if chosen:
+            self.open_plan(Path(chosen))
+
+    def open_plan(self, path: Path) -> None:
+        """Check a plan, or a list of fields, against the set-up that is open."""
+        if self.fields.open(path):
+            self.workspace.left.setCurrentWidget(self.workspace.fields)
+        else:
+            self.tell("Open the patient's set-up first; the plan is checked against it.")
 
     def show_cautions(self) -> None:
         """Show what to know before anything here is relied on."""
@@ -149,7 +178,8 @@ class MainWindow(QMainWindow):
         if path is not None:
             event.acceptProposedAction()
             # After the drag has ended: a question in between would hold up the program that it came from.
-            QTimer.singleShot(0, lambda: self.files.open(path))
+            opened = self.files.open if path.name.endswith(_SUFFIX) else self.open_plan
+            QTimer.singleShot(0, lambda: opened(path))
 
     def _restore(self) -> None:
         self.resize(1280, 800)
@@ -199,9 +229,9 @@ class MainWindow(QMainWindow):
 
 
 def _dropped(event: QDropEvent) -> Path | None:
-    """Return the one set-up file that is being dropped, None for anything else."""
+    """Return the one set-up or plan file that is being dropped, None for anything else."""
     urls = event.mimeData().urls()
     if len(urls) != 1 or not urls[0].isLocalFile():
         return None
     path = Path(urls[0].toLocalFile())
-    return path if path.name.endswith(_SUFFIX) else None
+    return path if path.name.lower().endswith((_SUFFIX, *_PLAN_SUFFIXES)) else None

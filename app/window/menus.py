@@ -6,9 +6,9 @@ from typing import TYPE_CHECKING
 from PySide6.QtGui import QAction, QActionGroup, QKeySequence
 from PySide6.QtWidgets import QMenu
 
+from app.document.session import Session
 from app.recent import recent_files
-from app.session import Session
-from app.window.scene_view import VIEWS
+from app.window.room.scene_view import VIEWS
 from app.window.shading_desk import Shading
 
 if TYPE_CHECKING:
@@ -51,6 +51,7 @@ class Menus:
         self._recent = menu.addMenu("Open &recent")
         self._recent.aboutToShow.connect(self._fill_recent)
         self._add(menu, "&New set-up in a room …", files.new, _KEYS.New)
+        self._add(menu, "Open a &plan …", window.browse_plan, "Ctrl+Shift+O", needs_document=True)
         self._add(menu, "S&tart screen", window.go_to_start, needs_document=True)
         menu.addSeparator()
         self._add(menu, "&Save", files.save, _KEYS.Save, needs_document=True)

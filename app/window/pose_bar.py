@@ -1,8 +1,11 @@
 """The pose that is looked at, in words and as fields to type into."""
 
+from enum import Enum
+
 from PySide6.QtCore import Qt, Signal
 from PySide6.QtWidgets import QHBoxLayout, QLabel, QSizePolicy, QWidget
 
+from app.plan.dry_run_words import clearance_text, required_text
 from app.window.angle_box import AngleBox
 from app.window.theme import Theme
 from geometry.assess import Pose
@@ -15,7 +18,21 @@ _SAID = {
     State.CONTACT: "Contact",
     State.SHORT: "Short of what is required",
     State.UNPROVED: "Unproved: not permitted",
-    State.PERMITTED: "Permitted",
+}
+
+
+class Proof(Enum):
+    """What is proved of the pose: all of it, nothing yet, or the field that it belongs to and not the pose alone."""
+
+    DONE = "done"
+    UNDER_WAY = "under way"
+    OF_FIELD = "of the field"
+
+
+_PERMITTED = {
+    Proof.DONE: "Permitted",
+    Proof.UNDER_WAY: "Proof under way",
+    Proof.OF_FIELD: "Enough here; see the field's verdict",
 }
 
 
@@ -79,14 +96,14 @@ class PoseBar(QWidget):
     def _ask(self) -> None:
         self.pose_wanted.emit(self.gantry.value(), self.couch.value())
 
-    def show_pose(self, pose: Pose | None, *, proved: bool) -> None:
-        """Show what is known; without the proof a pose that would be permitted says that it waits for it."""
+    def show_pose(self, pose: Pose | None, proof: Proof) -> None:
+        """Show what is known; without the proof a pose that would be permitted says what it waits for."""
         if pose is None:
             self.state.setText("")
             self.detail.setText("")
             return
-        self.state.setText(_SAID[pose.state] if proved or pose.state is not State.PERMITTED else "Proof under way")
-        self.detail.setText(_detail(pose))
+        self.state.setText(_SAID[pose.state] if pose.state is not State.PERMITTED else _PERMITTED[proof])
+        self.detail.setText(("with what this field has fitted: " if proof is Proof.OF_FIELD else "") + _detail(pose))
         self.detail.setToolTip(self.detail.text())
 
 
@@ -99,4 +116,4 @@ def _detail(pose: Pose) -> str:
     if pose.state is State.CONTACT:
         return f"between {parts}"
     required = pose.scene.required_mm(pose.machine_part, pose.couch_part)
-    return f"{pose.clearance_mm:.1f} mm between {parts}, {required:.1f} mm required"
+    return f"{clearance_text(pose.clearance_mm)} between {parts}, {required_text(required)} required"

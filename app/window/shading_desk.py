@@ -13,7 +13,7 @@ from app.jobs import Job, Publish
 from app.window.desk import Desk
 from app.window.workspace import Workspace
 from geometry.frames import R_fixed_gantry, R_fixed_turntable, normalised_deg
-from geometry.near_approach import Along, Approaches, GantryTurn, Over, WholePlane, nearest_approaches, tightest_marks
+from geometry.near.approach import Along, Approaches, GantryTurn, Over, WholePlane, nearest_approaches, tightest_marks
 from geometry.progress import Progress
 from geometry.scene import Motion, Scene
 

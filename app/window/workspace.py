@@ -6,22 +6,26 @@ from collections.abc import Sequence
 from PySide6.QtCore import Qt, QTimer, Signal
 from PySide6.QtWidgets import QSplitter, QStackedWidget, QTabWidget, QVBoxLayout, QWidget
 
-from app.document import Document
+from app.document.document import Document
 from app.live import Stage
-from app.window.angle_chart import AngleChart
 from app.window.banner import Banner
-from app.window.clearance_curve import ClearanceCurve
+from app.window.chart.angle_chart import AngleChart
+from app.window.chart.clearance_curve import ClearanceCurve
+from app.window.chart.picture import ChartField
+from app.window.chart.span_strip import SpanStrip
 from app.window.desk import Desk, Kept
-from app.window.direction_discs import DirectionDiscs
+from app.window.discs.direction_discs import DirectionDiscs
+from app.window.fields.fields_panel import FieldsPanel
+from app.window.fields.time_curve import TimeCurve
 from app.window.parts_panel import PartsPanel
-from app.window.pose_bar import PoseBar
-from app.window.remedies_panel import RemediesPanel
-from app.window.scene_view import SceneView
-from app.window.setup_panel import SetupPanel
-from app.window.span_strip import SpanStrip
+from app.window.pose_bar import PoseBar, Proof
+from app.window.remedies.remedies_panel import RemediesPanel
+from app.window.room.scene_view import SceneView
+from app.window.setup.setup_panel import SetupPanel
 from app.window.theme import LIGHT, Theme
 from geometry.assess import Assessment, Pose, tolerances_of
-from geometry.direction_field import field_of, unproved_field
+from geometry.directions.field import field_of, unproved_field
+from geometry.legs import Point
 from geometry.scene import Scene
 from geometry.spans import Span, spans_at
 from geometry.states import State
@@ -55,12 +59,16 @@ class Workspace(QWidget):
         self.discs = DirectionDiscs()
         self.spans = SpanStrip()
         self.remedies = RemediesPanel()
+        self.fields = FieldsPanel()
+        self.time_curve = TimeCurve()
+        self.time_curve.hide()
         self._lay_out()
         self._connect()
 
     def _lay_out(self) -> None:
         self.left = QTabWidget()
         self.left.addTab(self.setup_panel, "Set-up")
+        self.left.addTab(self.fields, "Fields")
         self.left.addTab(self.parts_panel, "Parts shown")
         self.left.setMinimumWidth(300)
         self.angles = QStackedWidget()
@@ -78,13 +86,13 @@ class Workspace(QWidget):
         self.right_tabs.addTab(self.discs, "Directions")
         self.right_tabs.currentChanged.connect(lambda _: self._show_discs())
         self.right = QSplitter(Qt.Orientation.Vertical)
-        _fill(self.right, ((self.right_tabs, 5), (self.remedies, 2)))
+        _fill(self.right, ((self.right_tabs, 5), (self.time_curve, 1), (self.remedies, 2)))
         self.columns = QSplitter(Qt.Orientation.Horizontal)
         _fill(self.columns, ((self.left, 0), (self.scene_view, 4), (self.right, 5)))
         for splitter in (self.right, self.columns):
             splitter.setChildrenCollapsible(False)
         self.columns.setSizes([330, 480, 560])
-        self.right.setSizes([480, 190])
+        self.right.setSizes([480, 130, 190])
         column = QVBoxLayout(self)
         column.setContentsMargins(0, 0, 0, 0)
         column.setSpacing(0)
@@ -98,6 +106,7 @@ class Workspace(QWidget):
         desk.opened.connect(self._on_opened)
         desk.changed.connect(self._on_changed)
         desk.staged.connect(self._on_staged)
+        desk.scene_shown.connect(self.show_scene)
         desk.turned.connect(lambda *_: self._show_angles())
         desk.closed.connect(self._refresh.stop)
         desk.posed.connect(self._on_posed)
@@ -125,6 +134,8 @@ class Workspace(QWidget):
             self.discs,
             self.spans,
             self.remedies,
+            self.fields,
+            self.time_curve,
         ):
             widget.set_theme(theme)
 
@@ -140,6 +151,11 @@ class Workspace(QWidget):
         self._with_beam = visible
         document = self._desk.document
         self.scene_view.set_beam(visible, collimator_deg=document.setup.collimator_deg if document else None)
+
+    def show_fields(self, fields: Sequence[tuple[str, tuple[Point, ...], State | None]]) -> None:
+        """Show a plan's fields on the chart, and the clearance over time while there are any."""
+        self.chart.show_fields([ChartField(*field) for field in fields])
+        self.time_curve.setVisible(bool(fields))
 
     def angle_view(self) -> AngleChart | ClearanceCurve:
         """Return the chart that is in use: the map, or the curve of a couch that cannot turn."""
@@ -185,7 +201,6 @@ class Workspace(QWidget):
             self.show_beam(self._with_beam)
 
     def _on_staged(self, stage: Stage) -> None:
-        self.show_scene(stage.scene)
         labels = [part.label for part in stage.scene.parts]
         self.parts_panel.show_scene(stage.scene)
         self.setup_panel.set_messages(stage.scene.no_travel)
@@ -232,7 +247,11 @@ class Workspace(QWidget):
 
     def _on_posed(self, pose: Pose) -> None:
         assessment = self._desk.assessment
-        self.pose_bar.show_pose(pose, proved=assessment is not None)
+        if not self._desk.is_own_scene:
+            proof = Proof.OF_FIELD
+        else:
+            proof = Proof.UNDER_WAY if assessment is None else Proof.DONE
+        self.pose_bar.show_pose(pose, proof)
         self._show_witness(pose)
         if assessment is not None:
             self._show_spans(assessment, stale=False)

@@ -4,11 +4,11 @@ from functools import cache
 from pathlib import Path
 
 from app.files.setup_file import read_setup
-from app.plan_check import Choices, check_plan
-from app.timeline import timeline_of
-from app.timeline_clearance import ClearanceOverTime, clearance_along
+from app.plan.check import Choices, check_plan
+from app.plan.timeline import timeline_of
+from app.plan.timeline_clearance import ClearanceOverTime, clearance_along
 from geometry.assess import Options
-from geometry.treatment import CheckReport, PlanField
+from geometry.treatment.data import CheckReport, PlanField
 
 FOLDER = Path(__file__).resolve().parents[2] / "sample_rooms"
 BREAST = FOLDER / "c_arm_close" / "breast.setup.toml"

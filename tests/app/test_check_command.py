@@ -1,10 +1,13 @@
 """`check` from end to end: exit status, table, and the JSON's schema for every verdict and for bad input."""
 
 import json
+import math
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
+import openpyxl
+import pypdf
 import pytest
 from pydicom import Dataset
 
@@ -208,6 +211,29 @@ def test_a_table_for_people_and_files_for_programs(folder: Path, capsys: Capture
     assert capsys.readouterr().out == ""
 
 
+def test_a_sheet_for_the_dry_run_and_a_workbook_say_what_the_json_says(folder: Path, capsys: Capture) -> None:
+    outs = [folder / name for name in ("all.json", "sheet.pdf", "sheet.xlsx")]
+    gaps = "field,gantry_deg,couch_deg,measured_mm,by,on\nap,0,0,41.5,A. Physicist,2026-01-02\n"
+    (folder / "test.gaps.csv").write_text(gaps, encoding="utf-8")
+    arguments = [argument for out in outs for argument in ("--out", str(out))]
+    assert checked(folder, CLEAR, *arguments, "--paper", "letter", "--quiet") == PERMITTED
+    capsys.readouterr()
+    report = json.loads(outs[0].read_text(encoding="utf-8"))
+    pdf = pypdf.PdfReader(outs[1])
+    assert [round(float(side)) for side in pdf.pages[0].mediabox[2:]] == [612, 792]
+    text = " ".join(page.extract_text() for page in pdf.pages)
+    cells = [str(cell) for sheet in openpyxl.load_workbook(outs[2]) for row in sheet.values for cell in row]
+    assert report["provenance"]["fingerprint"][:16] in text
+    assert any(report["provenance"]["fingerprint"] in cell for cell in cells)
+    for field in report["fields"]:
+        least = math.floor(10.0 * field["least_clearance_mm"]) / 10.0
+        assert f"{least:.1f}" in text
+        assert field["name"] in text
+        assert any(cell == field["name"] for cell in cells)
+    assert "41.5" in text
+    assert "41.5" in cells
+
+
 def test_names_that_a_stream_cannot_write_or_that_look_like_markup_do_no_harm(folder: Path, capsys: Capture) -> None:
     assert checked(folder, HEADER + "[red]a[/red] \u2264 b,0,,,0,,0,\n") == PERMITTED
     assert "[red]a[/red]" in capsys.readouterr().out
@@ -288,7 +314,7 @@ def test_a_set_up_that_cannot_be_built_is_a_fault_of_its_file(
     def unbuildable(*_arguments: object) -> None:
         raise GeometryError("size_mm = 0; allowed: above 0")
 
-    monkeypatch.setattr("app.plan_check.check_plan", unbuildable)
+    monkeypatch.setattr("app.plan.check.check_plan", unbuildable)
     assert checked(folder, CLEAR) == BAD_INPUT
     told = capsys.readouterr().err
     assert "test.setup.toml" in told
@@ -299,7 +325,7 @@ def test_stopped_work_writes_nothing(folder: Path, monkeypatch: pytest.MonkeyPat
     def stopped(*_arguments: object) -> None:
         raise Cancelled("stopped on request")
 
-    monkeypatch.setattr("app.plan_check.check_plan", stopped)
+    monkeypatch.setattr("app.plan.check.check_plan", stopped)
     out = folder / "out.json"
     assert checked(folder, CLEAR, "--out", str(out)) == STOPPED
     assert not out.exists()

@@ -3,7 +3,7 @@ import numpy as np
 from app.files.setup_file import read_setup
 from app.live import Coarseness, exact_stage, first_stage, proved_stage
 from geometry.assess import Options, assess
-from geometry.direction_regions import share_of
+from geometry.directions.regions import share_of
 from geometry.progress import Silent
 from tests.window_driver import ROOMS
 

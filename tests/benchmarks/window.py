@@ -18,7 +18,7 @@ import numpy as np
 from PySide6.QtCore import QEvent, QObject, Qt, QTimer
 from PySide6.QtWidgets import QWidget
 
-from app.edits import set_value
+from app.document.edits import set_value
 from app.kernel_cache import choose_kernel_cache
 from app.live import Stage
 from app.window.main_window import MainWindow

@@ -126,7 +126,7 @@ def test_a_reach_that_is_a_twentieth_too_small_proves_what_is_false(
     _, least = true_slacks(setup, 1.0)
     assert least < -0.1
     assert np.isnan(one_cell(setup, 1.0).slack_mm[0, 0])
-    monkeypatch.setattr(planes, "packed_hulls", smaller_reach)
+    monkeypatch.setattr(planes, "_packed", smaller_reach)
     assert one_cell(setup, 1.0).slack_mm[0, 0] >= 0.0
 
 

@@ -12,9 +12,9 @@ import pytest
 import shapely
 from pytransform3d.rotations import active_matrix_from_angle
 
-from geometry.direction_regions import SPHERE_SR, folded, solid_angle_sr
-from geometry.directions import PatientAxes, directions_patient, directions_tabletop
-from geometry.discs import Pairing, pixel_places
+from geometry.directions.axes import PatientAxes, directions_patient, directions_tabletop
+from geometry.directions.discs import Pairing, pixel_places
+from geometry.directions.regions import SPHERE_SR, folded, solid_angle_sr
 from geometry.frames import PATIENT_POSITIONS
 
 # (X, Y, Z) of the table top to (x, y, z) of the patient, as the table prints it.

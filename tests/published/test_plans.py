@@ -15,11 +15,11 @@ from pydicom import Dataset
 from app.check_command import read_fields
 from app.files.dicom import read_external_contour
 from app.files.setup_file import read_setup
-from app.plan_check import Choices, check_plan
+from app.plan.check import Choices, check_plan
 from geometry.assess import Options
 from geometry.imported import ContourStack
 from geometry.states import State
-from geometry.treatment import CheckReport
+from geometry.treatment.data import CheckReport
 from tests.app.plan_files import ROOM, SETUP, write_setup
 from tests.open_data import open_data_folder
 from tests.reference.plan_oracle import Opinion, opinions

@@ -4,10 +4,10 @@ from dataclasses import replace
 from functools import cache
 
 from app.files.provenance import Provenance, provenance_of
-from app.plan_check import check_plan
+from app.plan.check import check_plan
 from geometry.machine import Readout
 from geometry.setup import Setup
-from geometry.treatment import CheckReport, PlanField
+from geometry.treatment.data import CheckReport, PlanField
 from tests.app.files.assessments import DAY, OPTIONS, ROOM, SETUP
 
 FIELDS = (

@@ -4,9 +4,9 @@ from pathlib import Path
 
 import pytest
 
-from app.device_edits import add_box
-from app.document import Document, new_document, open_document
-from app.edits import in_turn, set_value
+from app.document.device_edits import add_box
+from app.document.document import Document, new_document, open_document
+from app.document.edits import in_turn, set_value
 from app.files.autosave import Autosave, Pending, discard, pending_recovery, side_file
 from app.files.fingerprint import fingerprint
 from app.files.setup_writer import ChangedOnDisk, save_setup

@@ -7,7 +7,7 @@ import pytest
 from app.files import fields_csv
 from app.files.fields_csv import read_field_rows
 from geometry.errors import BadInput
-from geometry.treatment import PlanField
+from geometry.treatment.data import PlanField
 
 HEADER = "field,gantry_from_deg,gantry_to_deg,direction,couch_from_deg,couch_to_deg,collimator_deg,fitted\n"
 

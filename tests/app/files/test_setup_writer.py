@@ -13,16 +13,16 @@ import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
-from app import document as document_module
-from app.device_edits import add_box, move_device, remove_device
-from app.document import Document, open_document
-from app.edits import add_component, change_component, fit, in_turn, remove_component, set_arm, set_value
-from app.fields import Edit
+from app.document import document as document_module
+from app.document.device_edits import add_box, move_device, remove_device
+from app.document.document import Document, open_document
+from app.document.edits import add_component, change_component, fit, in_turn, remove_component, set_arm, set_value
+from app.document.fields import Edit
+from app.document.session import Session
 from app.files import atomic, setup_writer
 from app.files.fingerprint import fingerprint
 from app.files.setup_file import read_setup
 from app.files.setup_writer import ChangedOnDisk, changed_on_disk, save_setup, setup_text
-from app.session import Session
 from geometry.errors import BadInput, GeometryError
 from geometry.setup import Surface
 from tests.app.files.documents import ROOM_TEXT, SETUP_TEXT, faults_of, setup_document, written
@@ -543,8 +543,8 @@ def test_whatever_step_fails_the_file_is_whole(
 _SAVER = """
 import sys
 from pathlib import Path
-from app.document import open_document
-from app.edits import set_value
+from app.document.document import open_document
+from app.document.edits import set_value
 from app.files.setup_writer import save_setup
 path = Path(sys.argv[1])
 document = open_document(path)

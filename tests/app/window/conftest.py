@@ -30,6 +30,8 @@ def window(own_folders: Path, qtbot: QtBot) -> Iterator[MainWindow]:  # noqa: AR
     made.close()
     left = [thread.name for thread in threading.enumerate() if thread.name.startswith("wideberth")]
     assert not left
-    going = [(type(timer.parent()).__name__, timer.interval()) for timer in made.findChildren(QTimer) if timer.isActive()]
+    going = [
+        (type(timer.parent()).__name__, timer.interval()) for timer in made.findChildren(QTimer) if timer.isActive()
+    ]
     assert not going
     made.deleteLater()

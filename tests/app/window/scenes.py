@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from PySide6.QtGui import QImage, QPixmap
 
 from app.files.setup_file import read_setup
-from app.window.opengl_probe import Graphics
+from app.window.room.opengl_probe import Graphics
 from geometry.scene import Scene, build_scene
 
 _ROOMS = Path(__file__).parents[3] / "sample_rooms"
@@ -26,7 +26,7 @@ def scene_of(name: str) -> Scene:
 def graphics_here() -> Graphics:
     """Return what draws for VTK on this machine."""
     run = subprocess.run(
-        [sys.executable, "-m", "app.window.opengl_probe"], cwd=_ROOMS.parent, capture_output=True, check=False
+        [sys.executable, "-m", "app.window.room.opengl_probe"], cwd=_ROOMS.parent, capture_output=True, check=False
     )
     return Graphics(run.returncode) if run.returncode in {0, 3} else Graphics.NONE
 

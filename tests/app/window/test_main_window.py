@@ -10,7 +10,7 @@ from PySide6.QtGui import QDropEvent
 from PySide6.QtTest import QTest
 from PySide6.QtWidgets import QFileDialog, QMessageBox, QPushButton
 
-from app.edits import set_value
+from app.document.edits import set_value
 from app.files.setup_file import read_setup
 from app.live import Stage
 from app.window.main_window import MainWindow

@@ -1,0 +1,1 @@
+"""A document at work: what it holds, its edits, and undo. No Qt."""

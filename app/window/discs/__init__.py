@@ -1,0 +1,1 @@
+"""The direction discs."""

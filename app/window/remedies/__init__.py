@@ -1,0 +1,1 @@
+"""What stands in the way, and what would help."""

@@ -1,0 +1,1 @@
+"""The room in 3D."""

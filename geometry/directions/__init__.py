@@ -1,0 +1,1 @@
+"""Beam directions: over the sphere, and as the patient sees them."""

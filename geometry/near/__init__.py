@@ -1,0 +1,1 @@
+"""How near the other side comes to every place of a surface."""

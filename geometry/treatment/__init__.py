@@ -1,0 +1,1 @@
+"""A plan's fields and the moves between them, checked."""
