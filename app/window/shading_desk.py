@@ -52,8 +52,8 @@ class ShadingDesk(QObject):
         self._timer.setSingleShot(True)
         self._timer.setInterval(_REST_MS)
         self._timer.timeout.connect(self._start)
-        desk.staged.connect(lambda _: self._timer.start())
-        desk.posed.connect(lambda _: self._timer.start())
+        desk.staged.connect(lambda _: self._start_soon())
+        desk.posed.connect(lambda _: self._start_soon())
         desk.opened.connect(lambda _: self._clear())
         desk.closed.connect(self._timer.stop)
         self._view.place_pointed.connect(self._on_pointed)
@@ -72,7 +72,11 @@ class ShadingDesk(QObject):
     def set_field(self, points_deg: tuple[tuple[float, float], ...]) -> None:
         """Take over the control points (gantry, couch) of the field that is chosen."""
         self._field = points_deg
-        self._timer.start()
+        self._start_soon()
+
+    def _start_soon(self) -> None:
+        if self._kind is not Shading.NONE and self._desk.session is not None:
+            self._timer.start()
 
     def _over(self) -> Over | None:
         if self._kind is Shading.PLANE:

@@ -247,10 +247,9 @@ class Workspace(QWidget):
 
     def _on_posed(self, pose: Pose) -> None:
         assessment = self._desk.assessment
+        proof = Proof.UNDER_WAY if assessment is None else Proof.DONE
         if not self._desk.is_own_scene:
             proof = Proof.OF_FIELD
-        else:
-            proof = Proof.UNDER_WAY if assessment is None else Proof.DONE
         self.pose_bar.show_pose(pose, proof)
         self._show_witness(pose)
         if assessment is not None:
