@@ -17,7 +17,7 @@ from app.window.export_desk import ExportDesk
 from app.window.fields.fields_desk import FieldsDesk
 from app.window.fields.gap_keeper import GapKeeper
 from app.window.file_desk import FileDesk
-from app.window.menus import Menus
+from app.window.menus import Commands, Menus
 from app.window.remedies.remedy_desk import RemedyDesk
 from app.window.settings import WindowSettings
 from app.window.shading_desk import ShadingDesk
@@ -60,7 +60,7 @@ class MainWindow(QMainWindow):
         self._doing = QLabel()
         self.statusBar().addPermanentWidget(self._doing)
         self.statusBar().addPermanentWidget(self._progress)
-        self.menus = Menus(self)
+        self.menus = Menus(self, self._commands())
         self._may_close = False
         self.setAcceptDrops(True)
         self.setMinimumSize(900, 600)
@@ -96,6 +96,19 @@ class MainWindow(QMainWindow):
         for source in (self.files, self.exports, self.fields, self.gaps):
             source.told.connect(self.tell)
         self.exports.failed.connect(self.tell)
+
+    def _commands(self) -> Commands:
+        return Commands(
+            desk=self.desk,
+            files=self.files,
+            exports=self.exports,
+            workspace=self.workspace,
+            choose_shading=self.shading.choose,
+            browse_plan=self.browse_plan,
+            go_to_start=self.go_to_start,
+            show_cautions=self.show_cautions,
+            set_theme=self.set_theme,
+        )
 
     def tell(self, text: str) -> None:
         """Say something in the status line, for a while."""

@@ -1,35 +1,52 @@
 """The menus: every command with its keys, and when it makes sense."""
 
 from collections.abc import Callable
-from typing import TYPE_CHECKING
+from dataclasses import dataclass
 
 from PySide6.QtGui import QAction, QActionGroup, QKeySequence
-from PySide6.QtWidgets import QMenu
+from PySide6.QtWidgets import QMainWindow, QMenu
 
 from app.document.session import Session
 from app.recent import recent_files
+from app.window.desk import Desk
+from app.window.export_desk import ExportDesk
+from app.window.file_desk import FileDesk
 from app.window.room.scene_view import VIEWS
 from app.window.shading_desk import Shading
-
-if TYPE_CHECKING:
-    from app.window.main_window import MainWindow
+from app.window.workspace import Workspace
 
 _KEYS = QKeySequence.StandardKey
 _THEMES = {"system": "As the system", "light": "Light", "dark": "Dark"}
 
 
+@dataclass(frozen=True)
+class Commands:
+    """What the menus can ask for: of the desks and of the window itself."""
+
+    desk: Desk
+    files: FileDesk
+    exports: ExportDesk
+    workspace: Workspace
+    choose_shading: Callable[[Shading], None]
+    browse_plan: Callable[[], None]
+    go_to_start: Callable[[], None]
+    show_cautions: Callable[[], None]
+    set_theme: Callable[[str], None]
+
+
 class Menus:
     """The window's menu bar. Actions that need a document are off without one."""
 
-    def __init__(self, window: "MainWindow") -> None:
+    def __init__(self, window: QMainWindow, commands: Commands) -> None:
         self._window = window
+        self._commands = commands
         self._with_document: list[QAction] = []
         self._file()
         self._edit()
         self._view()
         self._pose()
         help_menu = self._menu("&Help")
-        self._add(help_menu, "&Before you rely on it …", window.show_cautions, "F1")
+        self._add(help_menu, "&Before you rely on it …", commands.show_cautions, "F1")
 
     def show_document(self, session: Session | None) -> None:
         """Take over what can be undone, and whether there is a document at all."""
@@ -45,14 +62,14 @@ class Menus:
         self._themes[choice].setChecked(True)
 
     def _file(self) -> None:
-        window, files, exports = self._window, self._window.files, self._window.exports
+        commands, files, exports = self._commands, self._commands.files, self._commands.exports
         menu = self._menu("&File")
         self._add(menu, "&Open …", files.browse, _KEYS.Open)
         self._recent = menu.addMenu("Open &recent")
         self._recent.aboutToShow.connect(self._fill_recent)
         self._add(menu, "&New set-up in a room …", files.new, _KEYS.New)
-        self._add(menu, "Open a &plan …", window.browse_plan, "Ctrl+Shift+O", needs_document=True)
-        self._add(menu, "S&tart screen", window.go_to_start, needs_document=True)
+        self._add(menu, "Open a &plan …", commands.browse_plan, "Ctrl+Shift+O", needs_document=True)
+        self._add(menu, "S&tart screen", commands.go_to_start, needs_document=True)
         menu.addSeparator()
         self._add(menu, "&Save", files.save, _KEYS.Save, needs_document=True)
         self._add(menu, "Save &as …", files.save_as, "Ctrl+Shift+S", needs_document=True)
@@ -63,15 +80,15 @@ class Menus:
         self._add(
             menu,
             "Export a picture of the roo&m …",
-            lambda: exports.export_picture(window.workspace.scene_view.picture),
+            lambda: exports.export_picture(commands.workspace.scene_view.picture),
             needs_document=True,
         )
         self._add(menu, "Prin&t the angle chart …", exports.print_chart, _KEYS.Print, needs_document=True)
         menu.addSeparator()
-        self._add(menu, "&Quit", window.close, _KEYS.Quit)
+        self._add(menu, "&Quit", self._window.close, _KEYS.Quit)
 
     def _edit(self) -> None:
-        desk = self._window.desk
+        desk = self._commands.desk
         menu = self._menu("&Edit")
         self.undo = self._add(menu, "Undo", desk.undo, _KEYS.Undo)
         self.redo = self._add(menu, "Redo", desk.redo, _KEYS.Redo)
@@ -80,7 +97,7 @@ class Menus:
         self._add(menu, "&Let the kept map go", lambda: desk.keep(None), needs_document=True)
 
     def _view(self) -> None:
-        window, workspace = self._window, self._window.workspace
+        commands, workspace = self._commands, self._commands.workspace
         view = workspace.scene_view
         menu = self._menu("&View")
         for place, name in enumerate(VIEWS, start=1):
@@ -102,7 +119,9 @@ class Menus:
         shading = menu.addMenu("&Nearest approach")
         group = QActionGroup(shading)
         for kind in Shading:
-            action = self._add(shading, kind.value, lambda kind=kind: window.shading.choose(kind), needs_document=True)
+            action = self._add(
+                shading, kind.value, lambda kind=kind: commands.choose_shading(kind), needs_document=True
+            )
             action.setCheckable(True)
             action.setChecked(kind is Shading.NONE)
             group.addAction(action)
@@ -111,13 +130,13 @@ class Menus:
         self._themes = {}
         group = QActionGroup(colours)
         for choice, name in _THEMES.items():
-            action = self._add(colours, name, lambda choice=choice: window.set_theme(choice))
+            action = self._add(colours, name, lambda choice=choice: commands.set_theme(choice))
             action.setCheckable(True)
             group.addAction(action)
             self._themes[choice] = action
 
     def _pose(self) -> None:
-        desk = self._window.desk
+        desk = self._commands.desk
         menu = self._menu("&Pose")
         for name, keys, gantry_deg, couch_deg in (
             ("Gantry clockwise by 1°", "Ctrl+Right", 1.0, 0.0),
@@ -160,7 +179,7 @@ class Menus:
         paths = recent_files()
         for path in paths:
             name = f"{path.name}  ({path.parent.name})"
-            self._add(self._recent, name, lambda path=path: self._window.files.open(path))
+            self._add(self._recent, name, lambda path=path: self._commands.files.open(path))
         self._recent.setToolTipsVisible(True)
         if not paths:
             self._recent.addAction("Nothing yet").setEnabled(False)

@@ -12,6 +12,7 @@ from app.window.banner import Banner
 from app.window.chart.angle_chart import AngleChart
 from app.window.chart.clearance_curve import ClearanceCurve
 from app.window.chart.picture import ChartField
+from app.window.chart.reading import angle_words
 from app.window.chart.span_strip import SpanStrip
 from app.window.desk import Desk, Kept
 from app.window.discs.direction_discs import DirectionDiscs
@@ -44,6 +45,7 @@ class Workspace(QWidget):
         self._scene: Scene | None = None
         self._needs_camera = True
         self._with_beam = True
+        self._span: Span | None = None
         self._stale = False
         self._refresh = QTimer(self)
         self._refresh.setSingleShot(True)
@@ -114,6 +116,7 @@ class Workspace(QWidget):
         desk.refused.connect(lambda text: self.setup_panel.set_messages((text,)))
         for widget in (self.pose_bar, self.chart, self.curve, self.discs, self.spans):
             widget.pose_wanted.connect(desk.go_to)
+        self.spans.span_clicked.connect(self._show_span)
         for widget in (self.chart, self.curve):
             widget.axis_moved.connect(self.spans.set_axis)
             widget.pointed.connect(lambda reading: self.pointed.emit("" if reading is None else reading.line))
@@ -151,6 +154,17 @@ class Workspace(QWidget):
         self._with_beam = visible
         document = self._desk.document
         self.scene_view.set_beam(visible, collimator_deg=document.setup.collimator_deg if document else None)
+
+    def _show_span(self, span: Span) -> None:
+        """Show where a span begins and ends in the room, until another couch angle or set-up is looked at."""
+        ends = span.gantry_from_deg, span.gantry_to_deg
+        self._span = span
+        self.scene_view.set_arc(*ends, (angle_words(ends[0]), angle_words(ends[1])))
+
+    def _forget_span(self) -> None:
+        if self._span is not None:
+            self._span = None
+            self.scene_view.set_arc(0.0, 0.0, None)
 
     def show_fields(self, fields: Sequence[tuple[str, tuple[Point, ...], State | None]]) -> None:
         """Show a plan's fields on the chart, and the clearance over time while there are any."""
@@ -201,6 +215,8 @@ class Workspace(QWidget):
             self.show_beam(self._with_beam)
 
     def _on_staged(self, stage: Stage) -> None:
+        if stage.assessment is None:
+            self._forget_span()
         labels = [part.label for part in stage.scene.parts]
         self.parts_panel.show_scene(stage.scene)
         self.setup_panel.set_messages(stage.scene.no_travel)
@@ -241,6 +257,8 @@ class Workspace(QWidget):
 
     def _show_angles(self) -> None:
         gantry_deg, couch_deg = self._desk.gantry_deg, self._desk.couch_deg
+        if self._span is not None and self._span.couch_deg != couch_deg:
+            self._forget_span()
         self.pose_bar.show_angles(gantry_deg, couch_deg)
         for widget in (self.scene_view, self.chart, self.curve, self.discs, self.spans):
             widget.set_pose(gantry_deg, couch_deg)

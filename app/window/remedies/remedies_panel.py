@@ -99,7 +99,10 @@ class RemediesPanel(QWidget):
         self._refresh()
 
     def show_pose(self, pose: Pose, obstacles: Sequence[Obstacle]) -> None:
-        """Say what is known of a pose, and drop the changes listed for another one."""
+        """Say what is known of a pose, and drop the changes listed for another one.
+
+        Of a permitted pose the obstacles are what comes nearest to standing in the way.
+        """
         self._permitted = pose.state is State.PERMITTED
         self._state.setText(state_words(pose, obstacles))
         # Beyond the travel nothing stands anywhere.
@@ -182,9 +185,10 @@ def obstacle_words(obstacle: Obstacle) -> str:
     parts = f"{obstacle.machine_part.name} – {obstacle.couch_part.name}"
     if math.isnan(obstacle.clearance_mm):
         return f"{parts}: distance unknown"
+    near, required = millimetres(obstacle.clearance_mm), millimetres(obstacle.required_mm, up=True)
+    if obstacle.missing_mm <= 0.0:
+        return f"{parts}: {near} mm, {required} mm required"
     missing = f"{millimetres(obstacle.missing_mm, up=True)} mm missing"
     if obstacle.clearance_mm == 0.0:
         return f"{parts}: contact, {missing}"
-    return (
-        f"{parts}: {missing}, {millimetres(obstacle.clearance_mm)} of {millimetres(obstacle.required_mm, up=True)} mm"
-    )
+    return f"{parts}: {missing}, {near} of {required} mm"

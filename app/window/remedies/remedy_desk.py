@@ -19,6 +19,8 @@ from geometry.states import State
 
 LANE = "remedies"
 _REST_MS = 350
+# Where nothing is in the way, parts are named that have less to spare than this, mm.
+_NEARLY_MM = 150.0
 
 
 class RemedyDesk(QObject):
@@ -60,11 +62,9 @@ class RemedyDesk(QObject):
             self._panel.set_busy(own)
             return
         self._panel.show_pose(pose, ())
-        if proved and pose.state is not State.PERMITTED:
-            self._panel.set_busy(True)
+        self._panel.set_busy(proved and pose.state is not State.PERMITTED)
+        if proved:
             self._timer.start()
-        else:
-            self._panel.set_busy(False)
 
     def _start(self) -> None:
         document, scene = self._desk.document, self._desk.scene
@@ -135,6 +135,7 @@ def _look_for(
     progress: Progress,
     publish: Publish,
 ) -> None:
-    publish(obstacles_at(scene, *at_deg))
+    obstacles = obstacles_at(scene, *at_deg)
+    publish(obstacles or obstacles_at(scene, *at_deg, _NEARLY_MM))
     for remedy in find_remedies(scene.setup, *at_deg, options, assessment, progress):
         publish(remedy)

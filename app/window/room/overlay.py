@@ -32,6 +32,14 @@ class Witness:
 
 
 @dataclass(frozen=True, eq=False)
+class Arc:
+    """A turn of the beam's direction about the isocentre: points along it, (n, 3), mm, and what its two ends are."""
+
+    points: Array
+    texts: tuple[str, str]
+
+
+@dataclass(frozen=True, eq=False)
 class Overlay:
     """All that goes over one picture, in the fixed system, mm.
 
@@ -45,6 +53,7 @@ class Overlay:
     axis: Array
     field: Array
     note: str = ""
+    arc: Arc | None = None
 
 
 def paint_overlay(
@@ -59,6 +68,8 @@ def paint_overlay(
     if centre is not None and len(overlay.axis):
         placer.reserve(QRectF(centre.x() - 24.0, centre.y() - 24.0, 48.0, 48.0))
     _paint_beam(painter, overlay, view, theme)
+    if overlay.arc is not None:
+        _paint_arc(painter, overlay.arc, view, placer, theme)
     if overlay.witness is not None:
         _paint_witness(painter, overlay.witness, view, placer, theme)
     for point, text in overlay.tight:
@@ -103,6 +114,23 @@ def _paint_beam(painter: QPainter, overlay: Overlay, view: _View, theme: Theme) 
     centre = view.place(np.zeros(3))
     if centre is not None:
         _paint_isocentre(painter, centre, colour, halo)
+
+
+def _paint_arc(painter: QPainter, arc: Arc, view: _View, placer: LabelPlacer, theme: Theme) -> None:
+    """Draw where the beam comes from over a span, with a spoke at either end."""
+    line, centre = view.polygon(arc.points), view.place(np.zeros(3))
+    ends = view.place(arc.points[0]), view.place(arc.points[-1])
+    if line is None or centre is None or ends[0] is None or ends[1] is None:
+        return
+    colour, halo = theme.colour("accent"), theme.colour("halo")
+    painter.setBrush(Qt.BrushStyle.NoBrush)
+    for pen in (QPen(halo, 6.0), QPen(colour, 3.0)):
+        painter.setPen(pen)
+        painter.drawPolyline(line)
+    for end, text in ((ends[0], arc.texts[0]), (ends[1], arc.texts[1])):
+        painter.setPen(QPen(colour, 1.4, Qt.PenStyle.DashLine))
+        painter.drawLine(QLineF(centre, end))
+        draw_label(painter, [text], QLineF(end, end), placer, theme, loud=False)
 
 
 def _paint_isocentre(painter: QPainter, centre: QPointF, colour: QColor, halo: QColor) -> None:

@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
+from typing import Final
 
 import numpy as np
 from PySide6.QtCore import QPointF, Signal
@@ -11,18 +12,21 @@ from app.window.room.beam import Beam
 from app.window.room.camera import Camera
 from app.window.room.canvas import WITHOUT_OPENGL
 from app.window.room.colours import backdrop
-from app.window.room.overlay import Overlay, Witness
+from app.window.room.overlay import Arc, Overlay, Witness
 from app.window.room.picking import Hit, nearest_hit
 from app.window.room.rendering import Array, Frame
 from app.window.room.stage import Shading, Stage, Visibility
 from app.window.room.steering import SceneSteering, near_and_far_mm
 from app.window.room.views import VIEWS
 from app.window.theme import Theme
-from geometry.frames import moved
+from geometry.frames import moved, source_direction_fixed
 from geometry.scene import Motion, Scene, Side
 from geometry.states import State
 
 __all__ = ["VIEWS", "SceneView"]
+
+# How far from the isocentre a span is drawn, mm: about where heads are.
+_ARC_MM: Final = 500.0
 
 
 class SceneView(SceneSteering):
@@ -39,6 +43,7 @@ class SceneView(SceneSteering):
         super().__init__(theme, parent)
         self._stage = Stage(theme)
         self._witness: Witness | None = None
+        self._arc: Arc | None = None
         self._marked: tuple[str, ...] = ()
         self._tight: tuple[tuple[str, Array, str], ...] = ()
         self._pointed = ""
@@ -88,6 +93,16 @@ class SceneView(SceneSteering):
         self._witness = None
         if machine_point_mm is not None and couch_point_mm is not None:
             self._witness = Witness(np.asarray(machine_point_mm), np.asarray(couch_point_mm), text, state)
+        self.overlay_changed()
+
+    def set_arc(self, gantry_from_deg: float, gantry_to_deg: float, texts: tuple[str, str] | None) -> None:
+        """Show a turn of the gantry, unwrapped angles, with a text at either end; None for none."""
+        self._arc = None
+        if texts is not None:
+            steps = max(int(abs(gantry_to_deg - gantry_from_deg) / 3.0), 1)
+            angles = np.linspace(gantry_from_deg, gantry_to_deg, steps + 1)
+            points = [_ARC_MM * source_direction_fixed(float(angle)) for angle in angles]
+            self._arc = Arc(np.array(points), texts)
         self.overlay_changed()
 
     def mark_parts(self, labels: Sequence[str]) -> None:
@@ -161,6 +176,7 @@ class SceneView(SceneSteering):
             moved(T_fixed_gantry, stage.beam.axis(stage.source_axis_mm)) if beam else nothing,
             moved(T_fixed_gantry, stage.beam.outline()) if beam else nothing,
             WITHOUT_OPENGL if self.draws_without_opengl() else "",
+            self._arc,
         )
 
     def fit_points(self) -> Array:

@@ -176,3 +176,17 @@ def test_the_start_screen_leads_to_a_sample_in_one_click(window: MainWindow) -> 
     assert window.desk.document.setup.name == "Head, snout near the patient"
     assert window.desk.document.path is None
     assert window.workspace.banner.isVisible()
+
+
+def test_a_click_on_a_span_shows_its_ends_in_the_room(window: MainWindow) -> None:
+    opened(window)
+    view = window.workspace.scene_view
+    before = view.grab().toImage()
+    span = window.desk.assessment.spans[0]
+    window.workspace.spans.span_clicked.emit(span)
+    pause(0.1)
+    assert view.overlay().arc.texts == ("315°", "190°")
+    assert view.grab().toImage() != before
+    window.desk.go_to(0.0, 10.0)
+    pause(0.1)
+    assert view.overlay().arc is None

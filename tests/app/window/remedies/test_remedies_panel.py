@@ -81,6 +81,13 @@ def test_a_permitted_pose_is_told_with_what_is_to_spare(panel: RemediesPanel) ->
     assert panel.button.isHidden()
 
 
+def test_what_comes_nearest_to_standing_in_the_way_is_told_with_what_it_needs() -> None:
+    _, pose, _ = blocked(100.0)
+    (nearest, *_) = obstacles_at(pose.scene, 0.0, 0.0, 10_000.0)
+    spare = replace(nearest, clearance_mm=43.27, required_mm=20.01)
+    assert obstacle_words(spare).endswith(": 43.2 mm, 20.1 mm required")
+
+
 def test_the_parts_are_named_with_what_is_missing(panel: RemediesPanel) -> None:
     _, pose, obstacles = blocked(445.0, 460.0)
     panel.show_pose(pose, obstacles)
