@@ -1,8 +1,10 @@
+from dataclasses import replace
+
 import numpy as np
 
 from app.files.setup_file import read_setup
-from app.live import Coarseness, exact_stage, first_stage, proved_stage
-from geometry.assess import Options, assess
+from app.live import LiveMaps, exact_stage, proved_stage
+from geometry.assess import Options, assess, exact_map
 from geometry.directions.regions import share_of
 from geometry.progress import Silent
 from tests.window_driver import ROOMS
@@ -13,7 +15,7 @@ OPTIONS = Options(gantry_step_deg=6.0, couch_step_deg=6.0, edge_deg=1.0)
 def test_the_stages_end_with_what_the_assessment_of_the_set_up_says() -> None:
     setup = read_setup(ROOMS / "particle_snout" / "head.setup.toml")
     whole = assess(setup, OPTIONS)
-    first = first_stage(setup, Coarseness())
+    first = LiveMaps().first_stage(setup, OPTIONS)
     exact = exact_stage(first, OPTIONS, Silent())
     proved = proved_stage(exact, OPTIONS, Silent())
     assert (first.is_exact, exact.is_exact, exact.assessment) == (False, True, None)
@@ -25,7 +27,7 @@ def test_the_stages_end_with_what_the_assessment_of_the_set_up_says() -> None:
 
 def test_a_coarse_map_holds_exact_values_at_its_own_angles() -> None:
     setup = read_setup(ROOMS / "particle_snout" / "head.setup.toml")
-    first = first_stage(setup, Coarseness())
+    first = LiveMaps().first_stage(setup, OPTIONS)
     assert first.map is not None
     fine = exact_stage(first, Options(), Silent()).map
     assert fine is not None
@@ -36,10 +38,27 @@ def test_a_coarse_map_holds_exact_values_at_its_own_angles() -> None:
     assert np.allclose(shared, first.map.clearance_mm, rtol=0.0, atol=1e-6)
 
 
+def test_a_shifted_set_up_has_its_exact_map_at_once_and_any_other_a_coarse_one() -> None:
+    setup = read_setup(ROOMS / "particle_snout" / "head.setup.toml")
+    maps = LiveMaps()
+    exact = exact_stage(maps.first_stage(setup, OPTIONS), OPTIONS, Silent())
+    maps.anchor_at(exact.map, exact.scene, OPTIONS, Silent())
+    left, head, front = setup.isocentre.offset_mm
+    shifted = replace(setup, isocentre=replace(setup.isocentre, offset_mm=(left + 4.0, head - 3.0, front + 1.0)))
+    stage = maps.first_stage(shifted, OPTIONS)
+    assert stage.is_exact
+    assert stage.map is not None
+    plain = exact_map(stage.scene, OPTIONS)
+    assert np.allclose(stage.map.clearance_mm, plain.clearance_mm, rtol=0.0, atol=1e-6)
+    assert np.allclose(stage.map.slack_mm, plain.slack_mm, rtol=0.0, atol=1e-6)
+    for other, options in ((replace(setup, pitch_deg=0.5), OPTIONS), (shifted, replace(OPTIONS, edge_deg=2.0))):
+        assert not maps.first_stage(other, options).is_exact
+
+
 def test_a_slow_machine_gets_coarser_maps_and_a_fast_one_finer_ones() -> None:
-    coarseness = Coarseness()
+    maps = LiveMaps()
     steps = []
     for seconds in (0.05, 0.5, 0.5, 0.5, 0.5, 0.01, 0.01, 0.01, 0.01, 0.01):
-        coarseness.learn(seconds)
-        steps.append(coarseness.step_deg)
+        maps.learn(seconds)
+        steps.append(maps.step_deg)
     assert steps == [2.0, 3.0, 4.0, 6.0, 6.0, 4.0, 3.0, 2.0, 1.0, 1.0]
