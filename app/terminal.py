@@ -5,10 +5,10 @@ import sys
 import threading
 from collections.abc import Callable
 from types import FrameType, TracebackType
-from typing import Self, TextIO
+from typing import TYPE_CHECKING, Self, TextIO
 
-from rich.console import Console
-from rich.progress import BarColumn, Progress, TaskID, TaskProgressColumn, TextColumn, TimeRemainingColumn
+if TYPE_CHECKING:
+    from rich.progress import Progress, TaskID
 
 _Handler = Callable[[int, FrameType | None], object] | int | None
 
@@ -23,7 +23,7 @@ class TerminalProgress:
 
     def __init__(self, *, quiet: bool = False, stream: TextIO | None = None) -> None:
         self._bar = None if quiet else _bar_on(sys.stderr if stream is None else stream)
-        self._task = TaskID(0)
+        self._task: TaskID | None = None
         self._message = ""
         # A plain flag: unlike an Event it takes no lock, which a signal handler must not wait for.
         self._stop = False
@@ -48,7 +48,7 @@ class TerminalProgress:
 
     def report(self, fraction: float, message: str) -> None:
         """Show that `fraction` (0 to 1) of the work named by `message` is done; another message starts another bar."""
-        if self._bar is None or self._stop:
+        if self._bar is None or self._task is None or self._stop:
             return
         if message != self._message:
             self._message = message
@@ -78,14 +78,18 @@ class TerminalProgress:
     def _on_interrupt(self, _signal: int, _frame: FrameType | None) -> None:
         self._stop = True
         self._give_interrupt_back()
-        if self._bar is not None:
+        if self._bar is not None and self._task is not None:
             self._bar.update(self._task, description="stopping")
 
 
-def _bar_on(stream: TextIO | None) -> Progress | None:
+def _bar_on(stream: TextIO | None) -> "Progress | None":
     """Return a bar, not yet drawn, or None where `stream` is no terminal that can redraw a line."""
     if stream is None or not stream.isatty():
         return None
+    # Kept from what shows no bar: the window, which should be there at once, and `--help`.
+    from rich.console import Console  # noqa: PLC0415
+    from rich.progress import BarColumn, Progress, TaskProgressColumn, TextColumn, TimeRemainingColumn  # noqa: PLC0415
+
     console = Console(file=stream)
     if not console.is_terminal or console.is_dumb_terminal:
         return None

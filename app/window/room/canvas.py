@@ -43,6 +43,7 @@ class SceneCanvas(QWidget):
         self._probe: OpenGLProbe | None = None
         self._drawing: Drawing | None = None
         self._painted = False
+        self._is_decided = False
         self._ready = False
         self._busy = False
         self._due = False
@@ -72,6 +73,7 @@ class SceneCanvas(QWidget):
         if self._closed or self._drawing is not None or self._probe is not None:
             return
         choice = os.environ.get(CHOICE_VARIABLE, "")
+        self._is_decided = choice in {"painted", "vtk"}
         if choice == "painted":
             self._draw_with(_painted_renderer, threaded=True, painted=True)
         elif choice == "vtk":
@@ -80,6 +82,8 @@ class SceneCanvas(QWidget):
             self._probe = OpenGLProbe(self)
             self._probe.found.connect(self._probed)
             self._probe.start()
+            # Until it is known what a graphics card can do there is something to see.
+            self._draw_with(_painted_renderer, threaded=True, painted=True)
 
     def shutdown(self) -> None:
         """Stop everything and give it back: no process, thread or timer is left. The widget is not used afterwards."""
@@ -98,15 +102,16 @@ class SceneCanvas(QWidget):
 
     def is_settled(self) -> bool:
         """Tell whether the picture shown is the last one that is due, with smooth edges."""
-        return self._shown is not None and not (self._due or self._busy or self._idle.isActive() or self._unseen)
+        pending = self._due or self._busy or self._idle.isActive() or self._unseen
+        return self._shown is not None and self._is_decided and not pending
 
     def message(self) -> str:
         """Return what stands in the place of the picture while there is none."""
         return self._message
 
     def draws_without_opengl(self) -> bool:
-        """Tell whether the processor alone draws."""
-        return self._painted
+        """Tell whether it is settled that the processor alone draws."""
+        return self._painted and self._is_decided
 
     def picture(self, width: int, height: int) -> QImage:
         """Return the view as a picture of that many pixels, with all that is written over it."""
@@ -186,10 +191,12 @@ class SceneCanvas(QWidget):
 
     def _probed(self, graphics: Graphics) -> None:
         # Where OpenGL is only the processor's work, the own renderer does the same in a quarter of the time.
-        if graphics is Graphics.CARD:
+        if graphics is Graphics.CARD and self._drawing is not None:
+            self._drawing.close()
+            self._ready = self._busy = False
             self._draw_with(_vtk_renderer, threaded=_VTK_THREADED, painted=False)
-        else:
-            self._draw_with(_painted_renderer, threaded=True, painted=True)
+        self._is_decided = True
+        self.overlay_changed()
 
     def _draw_with(self, make: Callable[[], Renderer], *, threaded: bool, painted: bool) -> None:
         self._painted = painted
