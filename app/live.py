@@ -1,13 +1,15 @@
-"""What the window shows of a set-up, in stages: pieces at once, a coarse map, the exact one, at last the proof."""
+"""What the window shows of a set-up, in stages: pieces with a map at once, then the exact map, at last the proof."""
 
 import time
 from dataclasses import dataclass, replace
 from typing import Final
 
 from geometry.assess import Assessment, Options, assess_map, exact_map
+from geometry.carried import Anchor, anchor_of, carried_map
 from geometry.directions.regions import Share, share_of
 from geometry.progress import Progress, Silent, stop_if_cancelled
 from geometry.scene import Scene, build_scene
+from geometry.scene_shifts import shifts_between
 from geometry.setup import Setup
 from geometry.sweep import ClearanceMap
 
@@ -31,11 +33,30 @@ class Stage:
     share: Share | None = None
 
 
-class Coarseness:
-    """The step of coarse maps, which follows from how long the last ones took on this machine."""
+class LiveMaps:
+    """Maps that are quick enough to follow a hand, and what they need to know of those before.
+
+    A set-up that differs by shifts from one whose exact map is known gets its own exact map in a fraction of a sweep;
+    any other one a coarse map, whose step follows from how long the last ones took on this machine.
+    """
 
     def __init__(self) -> None:
         self.step_deg = 2.0
+        self._anchor: Anchor | None = None
+        self._anchor_options: Options | None = None
+
+    def first_stage(self, setup: Setup, options: Options) -> Stage:
+        """Return the scene with a map, exact or coarse, within the blink of an eye. GeometryError."""
+        scene = build_scene(setup)
+        anchor = self._anchor if self._anchor_options == options else None
+        carried = carried_map(anchor, scene) if anchor is not None else None
+        if carried is not None:
+            return Stage(setup, scene, carried, is_exact=True)
+        start = time.monotonic()
+        # Not to be cancelled: what follows a hand must show something, however fast the hand moves.
+        coarse = exact_map(scene, Options(gantry_step_deg=self.step_deg, couch_step_deg=self.step_deg), Silent())
+        self.learn(time.monotonic() - start)
+        return Stage(setup, scene, coarse)
 
     def learn(self, seconds: float) -> None:
         """Take the next step up or down where a coarse map took too long, or hardly any time."""
@@ -46,16 +67,14 @@ class Coarseness:
             place = max(place - 1, 0)
         self.step_deg = _STEPS_DEG[place]
 
+    def wants_anchor(self, before: Scene | None, scene: Scene) -> bool:
+        """Tell whether the maps to come would gain from an anchor at a scene that follows another by a shift."""
+        return before is not None and shifts_between(before, scene) is not None
 
-def first_stage(setup: Setup, coarseness: Coarseness) -> Stage:
-    """Return the scene with a coarse map: what can be seen within the blink of an eye. GeometryError."""
-    scene = build_scene(setup)
-    step_deg = coarseness.step_deg
-    start = time.monotonic()
-    # Not to be cancelled: what follows a hand must show something, however fast the hand moves.
-    coarse = exact_map(scene, Options(gantry_step_deg=step_deg, couch_step_deg=step_deg), Silent())
-    coarseness.learn(time.monotonic() - start)
-    return Stage(setup, scene, coarse)
+    def anchor_at(self, exact: ClearanceMap | None, scene: Scene, options: Options, progress: Progress) -> None:
+        """Let the maps to come follow from that of a scene, which is made if it is not known. Raises Cancelled."""
+        anchor = anchor_of(exact_map(scene, options, progress) if exact is None else exact, progress)
+        self._anchor, self._anchor_options = anchor, options
 
 
 def exact_stage(first: Stage, options: Options, progress: Progress) -> Stage:

@@ -21,14 +21,14 @@ from geometry.kernel import CONTACT, ROUNDING_MM, Hulls, Memory, compiled, dista
 from geometry.plane_kernel import (
     Lists,
     Pairs,
-    _between_spheres,
-    _group_settled,
-    _keep,
+    between_spheres,
     chord,
     gather,
+    group_settled,
+    keep_pair,
     turn_between,
 )
-from geometry.sweep_kernel import Angles, _middle
+from geometry.sweep_kernel import Angles, middle_of
 
 # What rounding can do to a kept bound: a share of it in single precision, and what it does to normals and vectors.
 SINGLE = 2.0**-23
@@ -116,8 +116,8 @@ def anchor_tiles(
         for row in range(j0, j1, block[1]):
             for column in range(i0, i1, block[0]):
                 cell = (column, min(column + block[0], i1), row, min(row + block[1], j1))
-                at_a, half_a, cos_a, sin_a = _middle(gantry, cell[0], cell[1])
-                at_b, half_b, cos_b, sin_b = _middle(couch, cell[2], cell[3])
+                at_a, half_a, cos_a, sin_a = middle_of(gantry, cell[0], cell[1])
+                at_b, half_b, cos_b, sin_b = middle_of(couch, cell[2], cell[3])
                 turn = turn_between(cos_a, sin_a, cos_b, sin_b)
                 if row == j0 and column == i0:
                     gather(a, b, pairs, turn, at_a, at_b, memory, lists)
@@ -164,7 +164,7 @@ def _sift_widely(a, b, pairs, turn, middle, near, tight, memory, lists, normals,
         following += 1
         if p == pairs.groups.first[group]:
             group += 1
-            if _group_settled(a, pairs, group - 1, turn, chord_a, chord_b, near, tight):
+            if group_settled(a, pairs, group - 1, turn, chord_a, chord_b, near, tight):
                 following = pairs.groups.first[group]
                 continue
         i = pairs.i[p]
@@ -177,17 +177,17 @@ def _sift_widely(a, b, pairs, turn, middle, near, tight, memory, lists, normals,
         if bound >= near and bound - required >= tight:
             continue
         motion = a.reach[i] * chord_a + b.reach[j] * chord_b + ROUNDING_MM
-        bound = max(bound, _between_spheres(a, i, b, j, turn) - motion)
+        bound = max(bound, between_spheres(a, i, b, j, turn) - motion)
         if bound >= near and bound - required >= tight:
             continue
         low, _, _ = distance(a, i, b, j, turn, memory, p, max(near, tight + required), half_a, half_b)
         falls = fall(a.reach[i], b.reach[j], memory.rate_a[p], memory.rate_b[p], half_a, half_b)
-        _keep(lists, 0, p, p, low, at_a, at_b, memory.rate_a[p], memory.rate_b[p])
+        keep_pair(lists, 0, p, p, low, at_a, at_b, memory.rate_a[p], memory.rate_b[p])
         bound = max(bound, low - falls)
         if bound >= near and bound - required >= tight:
             continue
         _set_normal(a, b, cos_a, sin_a, turn, memory, p, low, normals)
-        _keep(lists, 1, count, p, low, at_a, at_b, memory.rate_a[p], memory.rate_b[p])
+        keep_pair(lists, 1, count, p, low, at_a, at_b, memory.rate_a[p], memory.rate_b[p])
         # What is not a number stays, as near as can be.
         least[p] = int(min(bound, FARTHEST)) if bound > 0.0 else 0
         count += 1
@@ -255,7 +255,6 @@ def _keep_pose(a, b, bodies, pairs, gantry, couch, row, column, limit, known, me
         asked = False
         matters = True
         while True:
-            bound = max(bound, 0.0)
             if clearance == 0.0:
                 # Distances do not matter while the hinge is in contact; nor do they fall below 0.
                 matters = bound - limit - SLIP_MM - required < most and -required < most
@@ -274,7 +273,7 @@ def _keep_pose(a, b, bodies, pairs, gantry, couch, row, column, limit, known, me
             asked = True
             ceiling = max(clearance, slack + required) + enough
             bound, _, _ = distance(a, i, b, j, turn, memory, p, ceiling, 0.0, 0.0)
-            _keep(lists, 1, k, p, bound, angle_a, angle_b, memory.rate_a[p], memory.rate_b[p])
+            keep_pair(lists, 1, k, p, bound, angle_a, angle_b, memory.rate_a[p], memory.rate_b[p])
             _set_normal(a, b, cos_a, sin_a, turn, memory, p, bound, normals)
         if not matters or (p == hinge and clearance == 0.0):
             continue

@@ -97,7 +97,7 @@ def _between(p, i, q, j, turn):
 
 
 @inlined
-def _between_spheres(a, i, b, j, turn):
+def between_spheres(a, i, b, j, turn):
     """Return the distance of two pieces' enclosing spheres, negative where they overlap: a lower bound."""
     return _between(a.centres, i, b.centres, j, turn) - a.radii[i] - b.radii[j]
 
@@ -114,7 +114,7 @@ def gather(a, b, pairs, turn, at_a, at_b, memory, lists):
         j = pairs.j[p]
         memory.size[p] = 0
         lists.pair[0, p] = p
-        lists.lower[0, p] = _between_spheres(a, i, b, j, turn)
+        lists.lower[0, p] = between_spheres(a, i, b, j, turn)
         lists.at_a[0, p] = at_a
         lists.at_b[0, p] = at_b
         lists.rate_a[0, p] = a.reach[i]
@@ -158,7 +158,7 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
         if not led:
             if above == 0 and k == pairs.groups.first[group]:
                 group += 1
-                if _group_settled(a, pairs, group - 1, turn, chord_a, chord_b, near, tight):
+                if group_settled(a, pairs, group - 1, turn, chord_a, chord_b, near, tight):
                     following = pairs.groups.first[group]
                     continue
             if k == leader:
@@ -175,7 +175,7 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
         if not led and brought >= near and brought - required >= tight:
             continue
         motion = a.reach[i] * chord_a + b.reach[j] * chord_b + ROUNDING_MM
-        brought = max(brought, _between_spheres(a, i, b, j, turn) - motion)
+        brought = max(brought, between_spheres(a, i, b, j, turn) - motion)
         if not led and brought >= near and brought - required >= tight:
             continue
         limit = max(near, tight + required)
@@ -202,9 +202,9 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
             slack_bound = least - required
             slack_pair = p
         slack = min(slack, low - required)
-        _keep(lists, depth, kept, p, low, at_a, at_b, rate_a, rate_b)
+        keep_pair(lists, depth, kept, p, low, at_a, at_b, rate_a, rate_b)
         if above == 0:
-            _keep(lists, 0, p, p, low, at_a, at_b, rate_a, rate_b)
+            keep_pair(lists, 0, p, p, low, at_a, at_b, rate_a, rate_b)
         lists.here[kept] = least
         kept += 1
     _drop_settled(pairs, lists, depth, kept, near, tight, nearest, tightest)
@@ -212,7 +212,7 @@ def sift(a, b, pairs, turn, at_a, at_b, half_a, half_b, memory, lists, depth, le
 
 
 @pasted
-def _group_settled(a, pairs, group, turn, chord_a, chord_b, near, tight):
+def group_settled(a, pairs, group, turn, chord_a, chord_b, near, tight):
     """Tell whether no pair of a group can matter in a cell, by the spheres about them all."""
     groups = pairs.groups
     i = pairs.i[groups.first[group]]
@@ -222,7 +222,8 @@ def _group_settled(a, pairs, group, turn, chord_a, chord_b, near, tight):
 
 
 @pasted
-def _keep(lists, depth, place, p, low, at_a, at_b, rate_a, rate_b):
+def keep_pair(lists, depth, place, p, low, at_a, at_b, rate_a, rate_b):
+    """Put pair p at a place of the list at `depth`, with its bound, where that was found, and how fast it can fall."""
     lists.pair[depth, place] = p
     lists.lower[depth, place] = low
     lists.at_a[depth, place] = at_a
@@ -243,7 +244,7 @@ def _drop_settled(pairs, lists, depth, asked, near, tight, nearest, tightest):
         # Asked so that what is not a number stays.
         settled = least >= near and least - pairs.required[p] >= tight
         if not settled or k in (0, nearest, tightest):
-            _keep(
+            keep_pair(
                 lists,
                 depth,
                 kept,

@@ -77,7 +77,7 @@ def sweep(
         gantry = angles_of(gantry_deg if plane.with_gantry else np.zeros(1))
         couch = angles_of(couch_deg if plane.with_couch else np.zeros(1))
         field = sweep_plane(plane, gantry, couch, progress, threads)
-        _merge(result, plane, field)
+        merge_plane(result, plane, field)
     return result
 
 
@@ -119,7 +119,7 @@ def angles_of(angles_deg: Array) -> Angles:
     return Angles(np.radians(angles_deg), np.ascontiguousarray(pairs[:, 0]), np.ascontiguousarray(pairs[:, 1]))
 
 
-def _merge(result: ClearanceMap, plane: Plane, field: Field) -> None:
+def merge_plane(result: ClearanceMap, plane: Plane, field: Field) -> None:
     """Keep, pose by pose, the nearer of what was known and what a plane adds; a missing distance stays missing."""
     shape = result.clearance_mm.shape
     clearance = np.broadcast_to(field.clearance, shape)

@@ -35,7 +35,7 @@ class Field(NamedTuple):
 
 
 @pasted
-def _record(field, row, column, a, b, p, turn, memory):
+def record_pair(field, row, column, a, b, p, turn, memory):
     """Write pair p and its nearest points, from the corners and weights that its last query left, in a's system."""
     field.pair[row, column] = p
     r0, r1, r2, r3, r4, r5, r6, r7, r8 = turn
@@ -73,7 +73,7 @@ def _follow_leader(a, b, pairs, gantry, couch, cell, memory, p, field):
                 # The lower bound, not the upper: never claim more room than is certified.
                 field.clearance[row, column] = low
                 field.slack[row, column] = low - pairs.required[p]
-                _record(field, row, column, a, b, p, turn, memory)
+                record_pair(field, row, column, a, b, p, turn, memory)
     return near, near - pairs.required[p]
 
 
@@ -88,12 +88,12 @@ def _walk_block(a, b, pairs, gantry, couch, cell, memory, lists, leader, field):
     for row in range(j0, j1):
         for step in range(i1 - i0):
             column = i0 + step if (row - j0) % 2 == 0 else i1 - 1 - step
-            nearest = _find_nearest(a, b, pairs, gantry, couch, row, column, memory, lists, leader, nearest, field)
+            nearest = find_nearest(a, b, pairs, gantry, couch, row, column, memory, lists, leader, nearest, field)
     return lists.pair[1, nearest]
 
 
 @pasted
-def _find_nearest(a, b, pairs, gantry, couch, row, column, memory, lists, leader, start, field):
+def find_nearest(a, b, pairs, gantry, couch, row, column, memory, lists, leader, start, field):
     """Write clearance, slack and witness of one pose; return the place of the nearest pair in the list.
 
     `start` is that of the pose before.
@@ -141,7 +141,7 @@ def _find_nearest(a, b, pairs, gantry, couch, row, column, memory, lists, leader
             if low < clearance:
                 clearance = low
                 nearest = k
-                _record(field, row, column, a, b, p, turn, memory)
+                record_pair(field, row, column, a, b, p, turn, memory)
     field.clearance[row, column] = clearance
     field.slack[row, column] = slack
     # Contact is certain whatever else could not be found.
@@ -181,8 +181,8 @@ def sweep_tiles(
 @pasted
 def _sweep_block(a, b, pairs, gantry, couch, cell, memory, lists, leader, field):
     """Fill one block; `leader` is the nearest pair of the block before, -1 for none. Returns the last nearest one."""
-    at_a, half_a, cos_a, sin_a = _middle(gantry, cell[0], cell[1])
-    at_b, half_b, cos_b, sin_b = _middle(couch, cell[2], cell[3])
+    at_a, half_a, cos_a, sin_a = middle_of(gantry, cell[0], cell[1])
+    at_b, half_b, cos_b, sin_b = middle_of(couch, cell[2], cell[3])
     turn = turn_between(cos_a, sin_a, cos_b, sin_b)
     if leader < 0:
         leader = gather(a, b, pairs, turn, at_a, at_b, memory, lists)
@@ -192,7 +192,7 @@ def _sweep_block(a, b, pairs, gantry, couch, cell, memory, lists, leader, field)
 
 
 @pasted
-def _middle(angles, low, high):
+def middle_of(angles, low, high):
     """Return the middle one of the angles [low, high), the half-width about it, its cosine and sine."""
     k = (low + high) // 2
     half = max(angles.angle[high - 1] - angles.angle[k], angles.angle[k] - angles.angle[low])

@@ -86,6 +86,8 @@ class Follower(QObject):
         exact = stage.map if stage.is_exact else None
 
         def work(progress: Progress, _publish: Publish) -> None:
+            # Its first compilation takes seconds, in which nobody should wait for it.
+            prepare_carry_kernel()
             self._maps.anchor_at(exact, stage.scene, self._options, progress)
 
         self._jobs.start(Job(ANCHOR_LANE, work))
@@ -114,7 +116,6 @@ def _stages(
     """Publish the stages of a set-up, the later ones only while no newer one waits. GeometryError, Cancelled."""
     if not prepared.is_set():
         prepare_kernels(progress)
-        prepare_carry_kernel()
         prepared.set()
     first = maps.first_stage(setup, options)
     ahead(first.scene)

@@ -77,11 +77,13 @@ def drag_isocentre(window: MainWindow, heart: Heart) -> dict[str, float]:
     reached: dict[str, float] = {}
 
     def note(stage: Stage) -> None:
-        if stage.map is not None and not stage.is_exact:
+        if stage.map is not None and stage.assessment is None:
             steps.append(float(np.diff(stage.map.gantry_deg).max()))
         if stage.setup is desk.document.setup:
-            kind = "proved" if stage.assessment is not None else "exact" if stage.is_exact else "coarse"
-            reached.setdefault(kind, time.perf_counter())
+            if stage.is_exact:
+                reached.setdefault("exact", time.perf_counter())
+            if stage.assessment is not None:
+                reached.setdefault("proved", time.perf_counter())
 
     desk.staged.connect(note)
     paints = Paints(window.workspace.chart, lambda: desk.stage.map if desk.stage is not None else None)
@@ -101,7 +103,7 @@ def drag_isocentre(window: MainWindow, heart: Heart) -> dict[str, float]:
     wait_for(lambda: "proved" in reached, "the proof")
     return {
         "chart_redraws_per_s": redraws,
-        "coarse_step_deg": max(steps),
+        "coarsest_step_deg": max(steps),
         "rest_to_exact_s": reached["exact"] - rested,
         "rest_to_proof_s": reached["proved"] - rested,
         "longest_block_ms": heart.longest_ms,

@@ -1,7 +1,7 @@
 """Scenes that differ by shifts, and maps that must be the same.
 
 `NUMBA_DISABLE_JIT=1 python -m tests.geometry.carried_cases` prints `small_maps` as JSON, by the very same kernels
-uncompiled, and what comes out where no query gets anywhere.
+uncompiled, and what comes of queries that do not get far or anywhere.
 """
 
 import json
@@ -26,7 +26,7 @@ SMALL_GRID = np.array([-90.0, -60.0, 30.0, 31.0, 32.0]), np.array([-20.0, -19.0,
 
 
 def with_isocentre_off(setup: Setup, by_mm: Array) -> Setup:
-    """Return the set-up with its isocentre elsewhere in the patient by `by_mm` (3,): all couch parts shift by as much."""
+    """Return the set-up with its isocentre elsewhere in the patient by `by_mm` (3,): the couch parts shift as much."""
     isocentre = setup.isocentre
     if isocentre.landmark is None:
         assert isocentre.dicom_mm is not None
@@ -35,7 +35,7 @@ def with_isocentre_off(setup: Setup, by_mm: Array) -> Setup:
 
 
 def with_patient_off(setup: Setup, by_mm: Array) -> Setup:
-    """Return the set-up with its patient elsewhere on the table by `by_mm` (3,): the table shifts, the patient stays."""
+    """Return the set-up with its patient elsewhere on the table by `by_mm` (3,): the table shifts, the patient not."""
     where = setup.on_table
     along, across, up = (float(x) for x in by_mm)
     return replace(
@@ -74,8 +74,11 @@ def worst_difference_mm(found: ClearanceMap, expected: ClearanceMap) -> float:
     )
 
 
-def assert_same(found: ClearanceMap | None, expected: ClearanceMap) -> None:
-    """Hold a map against what the sweep finds; where two pairs are as near, either may be named."""
+def assert_same(found: ClearanceMap | None, expected: ClearanceMap, *, ties: bool = False) -> None:
+    """Hold a map against what the sweep finds; where two pairs are as near, either may be named.
+
+    `ties` tells that this is the rule rather than the exception.
+    """
     assert found is not None
     assert found.scene is expected.scene
     assert worst_difference_mm(found, expected) <= TOLERANCE_MM
@@ -84,10 +87,10 @@ def assert_same(found: ClearanceMap | None, expected: ClearanceMap) -> None:
     assert np.array_equal(found.couch_part >= 0, known)
     between = np.linalg.norm(found.machine_point_mm - found.couch_point_mm, axis=-1)
     assert np.abs(between - expected.clearance_mm)[known].max(initial=0.0) <= TOLERANCE_MM
-    # Apart, the nearest points are those of the sweep wherever they are but one pair.
+    # Apart, the nearest parts are those of the sweep wherever they are but one pair.
     clear = known & (expected.clearance_mm > 0.0)
     same = (found.machine_part == expected.machine_part) & (found.couch_part == expected.couch_part)
-    assert np.count_nonzero(same & clear) >= 0.98 * np.count_nonzero(clear)
+    assert ties or np.count_nonzero(same & clear) >= 0.98 * np.count_nonzero(clear)
 
 
 def small_maps() -> dict[str, list[float]]:
@@ -102,6 +105,20 @@ def small_maps() -> dict[str, list[float]]:
         "swept": [*swept.clearance_mm.ravel().tolist(), *swept.slack_mm.ravel().tolist()],
         "carried": [*carried.clearance_mm.ravel().tolist(), *carried.slack_mm.ravel().tolist()],
     }
+
+
+def from_a_hasty_anchor(seed: int) -> float:
+    """Return by how much a carried map is off whose anchor knows little: its queries gave up after three steps, mm."""
+    rng = np.random.default_rng(seed)
+    setup = random_setup(rng, most_parts=1)
+    exact = sweep(build_scene(setup), *SMALL_GRID, threads=1)
+    sound = anchor_of(exact, threads=1)
+    steps, kernel.STEPS = kernel.STEPS, 3
+    anchor = replace(sound, turning=anchor_of(exact, threads=1).turning)
+    kernel.STEPS = steps
+    scene = build_scene(with_isocentre_off(setup, random_shift(rng, 19.0)))
+    found = carried_map(anchor, scene, threads=1)
+    return np.inf if found is None else worst_difference_mm(found, sweep(scene, *SMALL_GRID, threads=1))
 
 
 def without_convergence() -> dict[str, bool]:
@@ -124,7 +141,8 @@ def main() -> int:
     """Print what the uncompiled kernels find."""
     if not numba.config.DISABLE_JIT:
         raise SystemExit("set NUMBA_DISABLE_JIT=1: compiled kernels cannot be changed")
-    print(json.dumps({**small_maps(), "unknown": without_convergence()}))
+    hasty = [from_a_hasty_anchor(seed) for seed in (12, 16, 21)]
+    print(json.dumps({**small_maps(), "hasty": hasty, "unknown": without_convergence()}))
     return 0
 
 

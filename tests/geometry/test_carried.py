@@ -20,8 +20,9 @@ from geometry.anchor_kernel import anchor_tiles
 from geometry.carried import LIMIT_MM, Anchor, anchor_of, carried_map, prepare_carry_kernel
 from geometry.carry_kernel import carry_tiles
 from geometry.errors import Cancelled
-from geometry.scene import build_scene, with_required
-from geometry.setup import Component, Setup
+from geometry.machine import Part
+from geometry.scene import build_scene
+from geometry.setup import Component, Required, Setup
 from geometry.sweep import grid_deg, sweep
 from tests.geometry.carried_cases import (
     SMALL_GRID,
@@ -32,7 +33,7 @@ from tests.geometry.carried_cases import (
     with_patient_off,
     worst_difference_mm,
 )
-from tests.geometry.made_rooms import block, made_setup, on_gantry, on_still_couch, on_table, on_turntable
+from tests.geometry.made_rooms import BEAN_MM, block, made_setup, on_gantry, on_still_couch, on_table, on_turntable
 from tests.reference.distances import TOLERANCE_MM, LeastDistances
 from tests.reference.features import distance_to_hull_mm
 from tests.reference.poses import standing_parts
@@ -57,17 +58,17 @@ def sample(name: str) -> tuple[Setup, Anchor]:
     setup = read_setup(ROOT / "sample_rooms" / f"{name}.setup.toml")
     scene = build_scene(setup)
     gantry, couch = scene.setup.room.gantry, scene.setup.room.couch.turntable
-    # Steps of no pattern: 7 deg and 5 deg, and some that are close together.
+    # Wide steps with a cluster of narrow ones.
     near = np.arange(-3.0, 3.0, 0.7)
     gantry_deg = np.unique(np.concatenate([grid_deg(gantry.low, gantry.high, 7.0), near + 41.0]))
     couch_deg = np.unique(np.clip(np.concatenate([grid_deg(couch.low, couch.high, 9.0), near]), couch.low, couch.high))
     return setup, anchor_of(sweep(scene, gantry_deg, couch_deg))
 
 
-def assert_carried(anchor: Anchor, setup: Setup) -> None:
+def assert_carried(anchor: Anchor, setup: Setup, *, ties: bool = False) -> None:
     scene = build_scene(setup)
     exact = anchor.exact
-    assert_same(carried_map(anchor, scene), sweep(scene, exact.gantry_deg, exact.couch_deg))
+    assert_same(carried_map(anchor, scene), sweep(scene, exact.gantry_deg, exact.couch_deg), ties=ties)
 
 
 @pytest.mark.parametrize("length_mm", [0.1, 5.0, MOST_MM])
@@ -111,7 +112,7 @@ def invented(seed: int) -> tuple[Setup, Anchor]:
     return setup, anchor_of(sweep(build_scene(setup), *GRID))
 
 
-@pytest.mark.parametrize("seed", range(2000, 2012))
+@pytest.mark.parametrize("seed", range(2000, 2010))
 def test_random_rooms(seed: int) -> None:
     """Couch parts follow any of the stages here, and what the patient requires is more than what the machine does."""
     setup, anchor = invented(seed)
@@ -154,15 +155,91 @@ def test_the_witness_lies_on_the_parts_it_names() -> None:
             assert found.slack_mm[row, column] == pytest.approx(true.slack_mm, abs=TOLERANCE_MM)
 
 
-def test_what_the_patient_requires_more() -> None:
+@pytest.mark.parametrize("patient_mm", [3.0, 60.0])
+@pytest.mark.parametrize("seed", range(2100, 2108))
+def test_what_the_patient_requires_more(seed: int, patient_mm: float) -> None:
     """The least slack then often belongs to another pair than the nearest, in contact too."""
-    setup, _ = sample(SAMPLES[0])
-    more = Component("patient motion", 30.0, patient_only=True)
-    for required in (replace(setup.required, components=(more,)), with_required(setup, 1.0, "invented").required):
-        setup = replace(setup, required=required)
-        anchor = anchor_of(sweep(build_scene(setup), grid_deg(-180.0, 180.0, 6.0), grid_deg(-90.0, 90.0, 12.0)))
-        assert_carried(anchor, with_isocentre_off(setup, np.array([8.0, -9.0, 11.0])))
-        assert_carried(anchor, with_patient_off(setup, np.array([8.0, -9.0, 11.0])))
+    setup = random_setup(np.random.default_rng(seed))
+    more = Component("patient motion", patient_mm, patient_only=True)
+    setup = replace(setup, required=Required(1.0, "invented", 2.0, (more,)))
+    anchor = anchor_of(sweep(build_scene(setup), *GRID))
+    rng = np.random.default_rng(seed)
+    for _ in range(2):
+        assert_carried(anchor, with_isocentre_off(setup, random_shift(rng, MOST_MM)))
+        assert_carried(anchor, with_patient_off(setup, random_shift(rng, 0.5 * MOST_MM)))
+
+
+def without_lists(anchor: Anchor) -> Anchor:
+    """Return the anchor with nothing kept of any pose: all are searched among what can matter in their block."""
+    assert anchor.turning is not None
+    size = np.full_like(anchor.turning.kept.size, -1)
+    return replace(anchor, turning=replace(anchor.turning, kept=anchor.turning.kept._replace(size=size)))
+
+
+@pytest.mark.parametrize("name", [name for name in SAMPLES if name != "closed_bore/chest_wing_board"])
+def test_poses_of_which_nothing_is_kept(name: str) -> None:
+    setup, _ = sample(name)
+    rng = np.random.default_rng(len(name))
+    # Small blocks, so that their bounds are tight.
+    steps = np.arange(0.0, 0.6, 0.1)
+    for _ in range(4):
+        grid = rng.uniform(-180.0, 179.0) + steps, rng.uniform(-90.0, 89.0) + steps
+        bare = without_lists(anchor_of(sweep(build_scene(setup), *grid)))
+        for _ in range(2):
+            assert_carried(bare, with_isocentre_off(setup, random_shift(rng, MOST_MM)), ties=True)
+
+
+@pytest.mark.parametrize("bare", [False, True])
+def test_one_block_above_the_table_and_a_farther_one_beside_it(bare: bool) -> None:
+    """A shift sideways leaves the distance to the one above and brings the table nearer to the other: 65 to 45 mm."""
+    setup = made_setup(
+        *_named(
+            [
+                on_gantry(block((100.0, 100.0, 50.0), (0.0, 0.0, 10.0 + 50.0 + 25.0))),
+                on_gantry(block((50.0, 100.0, 100.0), (100.0 + 65.0 + 25.0, 0.0, 0.0))),
+            ]
+        ),
+        on_table(block((200.0, 200.0, 20.0), (0.0, 0.0, 0.0))),
+    )
+    near_zero = np.array([-0.1, 0.0, 0.1])
+    anchor = anchor_of(sweep(build_scene(setup), near_zero, near_zero))
+    anchor = without_lists(anchor) if bare else anchor
+    found = []
+    for shift in ([MOST_MM, 0.0, 0.0], [-MOST_MM, 0.0, 0.0]):
+        moved = with_isocentre_off(setup, np.array(shift))
+        assert_carried(anchor, moved)
+        there = carried_map(anchor, build_scene(moved))
+        assert there is not None
+        found.append(there.clearance_mm[1, 1])
+    assert sorted(found) == pytest.approx([65.0 - MOST_MM, 50.0], abs=TOLERANCE_MM)
+
+
+def test_the_least_slack_passes_from_one_pair_to_another_while_a_third_is_in_contact() -> None:
+    """The table stands in a block throughout; the patient goes from 10 mm off one block to 15 mm off another."""
+    setup = made_setup(
+        *_named(
+            [
+                on_gantry(block((100.0, 100.0, 100.0), (0.0, 600.0, 0.0))),
+                on_gantry(block((20.0, 20.0, 20.0), (BEAN_MM / 2.0 + 10.0 + 10.0, 0.0, 0.0))),
+                on_gantry(block((20.0, 20.0, 20.0), (-BEAN_MM / 2.0 - 35.0 - 10.0, 0.0, 0.0))),
+            ]
+        ),
+        on_table(block((100.0, 100.0, 100.0), (0.0, 600.0, 0.0))),
+    )
+    for_patient = Component("patient motion", 60.0, patient_only=True)
+    setup = replace(setup, required=Required(1.0, "invented", 2.0, (for_patient,)))
+    near_zero = np.array([-0.1, 0.0, 0.1])
+    anchor = anchor_of(sweep(build_scene(setup), near_zero, near_zero))
+    found = []
+    for shift in ([MOST_MM, 0.0, 0.0], [-MOST_MM, 0.0, 0.0]):
+        moved = with_isocentre_off(setup, np.array(shift))
+        assert_carried(anchor, moved)
+        there = carried_map(anchor, build_scene(moved))
+        assert there is not None
+        assert (there.clearance_mm == 0.0).all()
+        found.append(there.slack_mm[1, 1] + setup.required.of_pair_mm(True))
+    # Shifted the other way, the patient is in contact too.
+    assert sorted(found) == pytest.approx([0.0, 35.0 - MOST_MM], abs=TOLERANCE_MM)
 
 
 def test_a_map_that_was_carried_is_an_anchor_too() -> None:
@@ -181,7 +258,7 @@ def test_more_pairs_at_a_pose_than_are_kept() -> None:
     anchor = anchor_of(sweep(build_scene(setup), *angles))
     assert anchor.turning is not None
     assert (anchor.turning.kept.size == -1).any()
-    assert_carried(anchor, with_isocentre_off(setup, np.array([3.0, 5.0, -7.0])))
+    assert_carried(anchor, with_isocentre_off(setup, np.array([3.0, 5.0, -7.0])), ties=True)
 
 
 def test_parts_that_stand_still_while_others_shift() -> None:
@@ -203,7 +280,7 @@ def test_parts_that_stand_still_while_others_shift() -> None:
     assert found >= {"column", "pedestal", "table"}
 
 
-def _named(parts: list) -> list:  # type: ignore[type-arg]
+def _named(parts: list[Part]) -> list[Part]:
     return [replace(part, name=f"{part.name} {k}") for k, part in enumerate(parts)]
 
 
@@ -228,7 +305,7 @@ def test_half_of_the_shift_would_be_noticed(monkeypatch: pytest.MonkeyPatch) -> 
     assert max(worst) > 0.1
 
 
-def test_uncompiled_kernels_give_the_same_and_no_numbers_where_nothing_converges() -> None:
+def test_uncompiled_kernels_give_the_same_and_nothing_where_nothing_converges() -> None:
     compiled = small_maps()
     assert compiled["carried"] == pytest.approx(compiled["swept"], abs=TOLERANCE_MM)
     printed = subprocess.run(
@@ -241,6 +318,7 @@ def test_uncompiled_kernels_give_the_same_and_no_numbers_where_nothing_converges
     ).stdout
     uncompiled = json.loads(printed)
     assert uncompiled["carried"] == pytest.approx(compiled["carried"], abs=1e-9)
+    assert max(uncompiled["hasty"]) <= TOLERANCE_MM
     assert uncompiled["unknown"] == {"sound": True, "unsound": True}
 
 
