@@ -53,19 +53,19 @@ def add_check(parser: argparse.ArgumentParser) -> None:
 def read_fields(path: Path) -> "tuple[PlanField, ...]":
     """Return the fields of a list or a plan, told apart by the suffix .csv. Raises BadInput."""
     if path.suffix.lower() == ".csv":
-        from app.files.fields_csv import read_field_rows  # noqa: PLC0415
+        from app.plan_files.fields_csv import read_field_rows  # noqa: PLC0415
 
         return read_field_rows(path)
-    from app.files.plan_dicom import read_plan_fields  # noqa: PLC0415
+    from app.plan_files.plan_dicom import read_plan_fields  # noqa: PLC0415
 
     return read_plan_fields(path)
 
 
 def _check(chosen: argparse.Namespace) -> int:
     # Kept from `--help` and `--version`, which need not wait for numba.
-    from app.files.check_exports import check_report_path  # noqa: PLC0415
-    from app.files.check_json import check_json  # noqa: PLC0415
     from app.files.provenance import provenance_of  # noqa: PLC0415
+    from app.plan_files.check_exports import check_report_path  # noqa: PLC0415
+    from app.plan_files.check_json import check_json  # noqa: PLC0415
     from geometry.assess import Options  # noqa: PLC0415
 
     for path in chosen.out:
@@ -108,9 +108,9 @@ def _report(chosen: argparse.Namespace, options: "Options", progress: TerminalPr
 def _write(
     chosen: argparse.Namespace, report: "CheckReport", provenance: "Provenance", progress: TerminalProgress
 ) -> None:
-    from app.files.check_exports import CheckExport, write_check  # noqa: PLC0415
-    from app.files.gaps_csv import read_kept_gaps  # noqa: PLC0415
     from app.plan.gaps import compare_gaps  # noqa: PLC0415
+    from app.plan_files.check_exports import CheckExport, write_check  # noqa: PLC0415
+    from app.plan_files.gaps_csv import read_kept_gaps  # noqa: PLC0415
     from geometry.assess import assess  # noqa: PLC0415
 
     gaps = compare_gaps(read_kept_gaps(chosen.setup), report, provenance.fingerprint)

@@ -1,6 +1,6 @@
 """What DICOM files tell of a patient's surface and of a plan.
 
-The one place for pydicom; `app.files.plan_dicom` reads beams through it. Only the elements named are read. Names,
+The one place for pydicom; `app.plan_files.plan_dicom` reads beams through it. Only the elements named are read. Names,
 numbers and dates of patients never reach the program.
 Sources: DICOM PS3.3 sections C.8.8.5, C.8.8.6 and C.8.8.8 (RT Structure Set), C.8.8.12, C.8.8.14 and C.8.8.25 (RT Plan,
 RT Ion Plan).

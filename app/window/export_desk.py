@@ -12,11 +12,11 @@ from PySide6.QtPrintSupport import QPrintDialog, QPrinter
 from PySide6.QtWidgets import QFileDialog, QWidget
 
 from app.files.atomic import write_atomically
-from app.files.check_exports import CheckExport, Paper, check_report_path, write_check
 from app.files.exports import check_grid_path, check_map_path, check_pose_path, write_grid, write_map, write_pose
 from app.files.provenance import Provenance, provenance_of
 from app.jobs import Job
 from app.plan.gaps import GapRow
+from app.plan_files.check_exports import CheckExport, Paper, check_report_path, write_check
 from app.window.captions import captioned, picture_lines
 from app.window.desk import Desk
 from geometry.assess import Assessment, Options

@@ -10,10 +10,10 @@ from PySide6.QtCore import QObject, QTimer, Signal
 from PySide6.QtWidgets import QFileDialog, QMessageBox, QWidget
 
 from app.document.document import Document, new_document, open_document
-from app.files.autosave import Autosave, Pending, Recovery, discard, pending_recovery
-from app.files.setup_writer import ChangedOnDisk, save_setup
 from app.jobs import Job
-from app.recent import remember_file
+from app.saving.autosave import Autosave, Pending, Recovery, discard, pending_recovery
+from app.saving.recent import remember_file
+from app.saving.setup_writer import ChangedOnDisk, save_setup
 from app.window.desk import Desk
 from geometry.errors import BadInput, WideberthError
 

@@ -8,8 +8,8 @@ from PySide6.QtWidgets import QApplication, QFileDialog, QLabel, QMainWindow, QP
 
 from app.document.document import Document
 from app.jobs import UNKNOWN, Jobs
-from app.recent import recent_files
 from app.samples import sample_rooms, samples_folder
+from app.saving.recent import recent_files
 from app.window.cautions_dialog import CautionsDialog
 from app.window.change_note import ChangeNote
 from app.window.desk import Desk

@@ -7,7 +7,7 @@ from PySide6.QtGui import QAction, QActionGroup, QKeySequence
 from PySide6.QtWidgets import QMainWindow, QMenu
 
 from app.document.session import Session
-from app.recent import recent_files
+from app.saving.recent import recent_files
 from app.window.desk import Desk
 from app.window.export_desk import ExportDesk
 from app.window.file_desk import FileDesk

@@ -15,7 +15,7 @@ from app.check_command import NOT_PERMITTED, PERMITTED
 from app.cli import BAD_INPUT, STOPPED, run
 from geometry.errors import Cancelled, GeometryError
 from geometry.states import State
-from tests.app.plan_files import OWN_STRUCTURES, arc, static, write_plan, write_setup
+from tests.app.made_plans import OWN_STRUCTURES, arc, static, write_plan, write_setup
 
 Capture = pytest.CaptureFixture[str]
 HEADER = "field,gantry_from_deg,gantry_to_deg,direction,couch_from_deg,couch_to_deg,collimator_deg,fitted\n"

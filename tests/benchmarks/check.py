@@ -13,9 +13,9 @@ import tempfile
 from collections.abc import Callable
 from pathlib import Path
 
-from app.files.plan_dicom import read_plan_fields
 from app.files.setup_file import read_setup
 from app.plan.check import check_plan
+from app.plan_files.plan_dicom import read_plan_fields
 from geometry.assess import Options
 from geometry.prepare import prepare_path_kernels
 from geometry.progress import Silent
@@ -23,7 +23,7 @@ from geometry.scene import build_scene
 from geometry.setup import Setup
 from geometry.sweep import grid_deg, sweep
 from geometry.treatment.data import CheckReport, PlanField
-from tests.app.plan_files import beam, point, write_plan
+from tests.app.made_plans import beam, point, write_plan
 from tests.benchmarks.timing import SAMPLE_ROOMS, TALL_HEAVY, best_of, line_of
 
 ARCS, POINTS = 40, 180

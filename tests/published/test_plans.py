@@ -20,7 +20,7 @@ from geometry.assess import Options
 from geometry.imported import ContourStack
 from geometry.states import State
 from geometry.treatment.data import CheckReport
-from tests.app.plan_files import ROOM, SETUP, write_setup
+from tests.app.made_plans import ROOM, SETUP, write_setup
 from tests.open_data import open_data_folder
 from tests.reference.plan_oracle import Opinion, opinions
 

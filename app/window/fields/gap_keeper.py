@@ -6,9 +6,9 @@ from functools import partial
 from PySide6.QtCore import QObject, Signal
 
 from app.document.document import Document
-from app.files.gaps_csv import read_kept_gaps, replace_gaps
 from app.jobs import Job
 from app.plan.gaps import MeasuredGap
+from app.plan_files.gaps_csv import read_kept_gaps, replace_gaps
 from app.window.desk import Desk
 from app.window.fields.fields_desk import FieldsDesk
 

@@ -18,7 +18,7 @@ from geometry.assess import Options
 from geometry.errors import BadInput
 from geometry.states import State
 from geometry.treatment.data import CheckReport
-from tests.app.plan_files import (
+from tests.app.made_plans import (
     BODY,
     ISOCENTRE,
     OWN_PLAN,

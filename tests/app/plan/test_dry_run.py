@@ -6,8 +6,8 @@ from dataclasses import replace
 
 import pytest
 
-from app.files.check_json import check_values
 from app.plan.dry_run import DO_NOT_RUN, NOT_PERMITTED, FieldRow, dry_run, state_words
+from app.plan_files.check_json import check_values
 from geometry.assess import assess_pose
 from geometry.scene import build_scene
 from geometry.setup import OnTable

@@ -7,8 +7,8 @@ import pytest
 from PySide6.QtWidgets import QFileDialog
 
 from app.document.edits import set_value
-from app.files.gaps_csv import read_kept_gaps
 from app.plan.gaps import MeasuredGap
+from app.plan_files.gaps_csv import read_kept_gaps
 from app.window.main_window import MainWindow
 from geometry.states import State
 from tests.window_driver import ROOMS, pause, settle, wait_for

@@ -19,10 +19,11 @@ from app.document.document import Document, open_document
 from app.document.edits import add_component, change_component, fit, in_turn, remove_component, set_arm, set_value
 from app.document.fields import Edit
 from app.document.session import Session
-from app.files import atomic, setup_writer
+from app.files import atomic
 from app.files.fingerprint import fingerprint
 from app.files.setup_file import read_setup
-from app.files.setup_writer import ChangedOnDisk, changed_on_disk, save_setup, setup_text
+from app.saving import setup_writer
+from app.saving.setup_writer import ChangedOnDisk, changed_on_disk, save_setup, setup_text
 from geometry.errors import BadInput, GeometryError
 from geometry.setup import Surface
 from tests.app.files.documents import ROOM_TEXT, SETUP_TEXT, faults_of, setup_document, written
@@ -545,7 +546,7 @@ import sys
 from pathlib import Path
 from app.document.document import open_document
 from app.document.edits import set_value
-from app.files.setup_writer import save_setup
+from app.saving.setup_writer import save_setup
 path = Path(sys.argv[1])
 document = open_document(path)
 print("ready", flush=True)

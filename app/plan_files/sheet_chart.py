@@ -8,7 +8,7 @@ from matplotlib.patheffects import withStroke
 from app.files.chart_frame import label_angles
 from app.files.chart_map import colour_scale, draw_map, fill_outside, map_limits, map_samples
 from app.files.readings import own_scales
-from app.files.sheet_page import INK, SMALL, Pages, line_mm
+from app.plan_files.sheet_page import INK, SMALL, Pages, line_mm
 from geometry.assess import Assessment
 from geometry.states import State
 from geometry.treatment.data import CheckReport, FieldCheck

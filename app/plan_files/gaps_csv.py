@@ -18,11 +18,11 @@ from typing import Final
 from app.files.delimited import Cell, write_table
 from app.files.input_file import bad
 from app.files.readings import reading_deg, rounded_down
-from app.files.typed_table import read_table
 from app.files.wording import described, printable
 from app.plan.dry_run import DryRun
 from app.plan.dry_run_words import PLACE_DIGITS
 from app.plan.gaps import MeasuredGap, places_to_measure
+from app.plan_files.typed_table import read_table
 from geometry.errors import BadInput, Fault
 
 COLUMNS: Final = ("field", "gantry_deg", "couch_deg", "measured_mm", "by", "on", "fingerprint")

@@ -11,7 +11,7 @@ import tomlkit
 from tomlkit.items import AoT, Array, InlineTable, Item
 
 from app.files.setup_references import parsed, toml_number
-from app.files.toml_layout import blocks, items_of, with_block, with_line, without
+from app.saving.toml_layout import blocks, items_of, with_block, with_line, without
 
 Value = str | float | bool | list[Any] | Mapping[str, Any]
 Place = tuple[str | int, ...]

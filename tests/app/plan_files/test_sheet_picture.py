@@ -2,8 +2,8 @@ import numpy as np
 import pytest
 import shapely
 
-from app.files.sheet_page import Pages
-from app.files.sheet_picture import VIEWS, View, add_picture, silhouette
+from app.plan_files.sheet_page import Pages
+from app.plan_files.sheet_picture import VIEWS, View, add_picture, silhouette
 from geometry.scene import ScenePart
 from tests.app.files.reports import small_report
 

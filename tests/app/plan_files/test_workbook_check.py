@@ -4,9 +4,9 @@ import pytest
 from openpyxl import load_workbook
 from openpyxl.worksheet.worksheet import Worksheet
 
-from app.files.workbook_check import FIELDS, GAPS, MOVES, write_check_workbook
 from app.plan.dry_run import dry_run
 from app.plan.gaps import MeasuredGap, compare_gaps
+from app.plan_files.workbook_check import FIELDS, GAPS, MOVES, write_check_workbook
 from tests.app.files.reports import provenance_for, report_with_scales, small_report
 
 

@@ -7,9 +7,9 @@ import pytest
 from app.document.device_edits import add_box
 from app.document.document import Document, new_document, open_document
 from app.document.edits import in_turn, set_value
-from app.files.autosave import Autosave, Pending, discard, pending_recovery, side_file
 from app.files.fingerprint import fingerprint
-from app.files.setup_writer import ChangedOnDisk, save_setup
+from app.saving.autosave import Autosave, Pending, discard, pending_recovery, side_file
+from app.saving.setup_writer import ChangedOnDisk, save_setup
 from tests.app.files.documents import ROOM_TEXT, SETUP_TEXT, written
 
 EDIT = in_turn(

@@ -4,8 +4,8 @@ import math
 from typing import Final
 
 from app.files.provenance import Provenance
-from app.files.sheet_page import BODY, GREY, INK, SMALL, Pages, line_mm, shortened, width_mm, wrapped
 from app.plan.dry_run import DO_NOT_RUN, DryRun
+from app.plan_files.sheet_page import BODY, GREY, INK, SMALL, Pages, line_mm, shortened, width_mm, wrapped
 
 _MARK_SIZE: Final = 9.0
 _SIGNATURES: Final = ("Dry run done by", "Checked by", "Medical physicist")

@@ -9,14 +9,14 @@ from matplotlib.backends.backend_pdf import PdfPages
 from app.files.atomic import write_atomically
 from app.files.chart_style import drawing_style, pdf_metadata
 from app.files.provenance import Provenance
-from app.files.sheet_chart import add_chart
-from app.files.sheet_fields import add_fields
-from app.files.sheet_gaps import add_gaps
-from app.files.sheet_head import add_checks, add_end, add_feet, add_head, add_remarks
-from app.files.sheet_page import Page, Pages, Paper
-from app.files.sheet_picture import add_picture
 from app.plan.dry_run import dry_run
 from app.plan.gaps import GapRow
+from app.plan_files.sheet_chart import add_chart
+from app.plan_files.sheet_fields import add_fields
+from app.plan_files.sheet_gaps import add_gaps
+from app.plan_files.sheet_head import add_checks, add_end, add_feet, add_head, add_remarks
+from app.plan_files.sheet_page import Page, Pages, Paper
+from app.plan_files.sheet_picture import add_picture
 from geometry.assess import Assessment
 from geometry.treatment.data import CheckReport
 

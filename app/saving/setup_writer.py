@@ -11,7 +11,7 @@ from app.document.document import Document, source_of, stamp_of
 from app.files.atomic import write_atomically
 from app.files.fingerprint import fingerprint
 from app.files.setup_references import read_as
-from app.files.setup_text import setup_text
+from app.saving.setup_text import setup_text
 from geometry.errors import BadInput, Fault, GeometryError
 from geometry.setup import Setup, Surface
 

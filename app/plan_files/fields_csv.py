@@ -20,8 +20,8 @@ from pathlib import Path
 from typing import Final
 
 from app.files.input_file import checked_file
-from app.files.turns import snapped_deg
 from app.files.wording import described, did_you_mean, one_of, printable
+from app.plan_files.turns import snapped_deg
 from geometry.errors import BadInput, Fault
 from geometry.legs import Point
 from geometry.treatment.data import PlanField

@@ -5,9 +5,9 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Final, Literal
 
-from app.files.check_json import write_check_json
 from app.files.provenance import Provenance
 from app.plan.gaps import GapRow
+from app.plan_files.check_json import write_check_json
 from geometry.assess import Assessment
 from geometry.errors import BadInput, Fault
 from geometry.treatment.data import CheckReport
@@ -52,13 +52,13 @@ def _write_json(export: CheckExport, path: Path) -> None:
 
 
 def _write_sheet(export: CheckExport, path: Path) -> None:
-    from app.files.sheet_pdf import write_sheet  # noqa: PLC0415 - slow to import, and not always needed
+    from app.plan_files.sheet_pdf import write_sheet  # noqa: PLC0415 - slow to import, and not always needed
 
     write_sheet(export.report, export.assessment, export.provenance, path, export.paper, export.gaps)
 
 
 def _write_workbook(export: CheckExport, path: Path) -> None:
-    from app.files.workbook_check import write_check_workbook  # noqa: PLC0415 - as above
+    from app.plan_files.workbook_check import write_check_workbook  # noqa: PLC0415 - as above
 
     write_check_workbook(export.report, export.provenance, path, export.gaps)
 

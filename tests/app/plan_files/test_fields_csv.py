@@ -4,8 +4,8 @@ from pathlib import Path
 
 import pytest
 
-from app.files import fields_csv
-from app.files.fields_csv import read_field_rows
+from app.plan_files import fields_csv
+from app.plan_files.fields_csv import read_field_rows
 from geometry.errors import BadInput
 from geometry.treatment.data import PlanField
 

@@ -15,7 +15,7 @@ from app.document.document import Document
 from app.document.edits import FIELDS
 from app.files.required_keys import ROOM_MODEL
 from app.files.setup_references import move_references, parsed
-from app.files.toml_edits import Place, Value, with_item, with_value, without_item, without_value
+from app.saving.toml_edits import Place, Value, with_item, with_value, without_item, without_value
 from geometry.body import Body
 from geometry.errors import GeometryError
 from geometry.machine import Part, Room

@@ -9,7 +9,7 @@ from matplotlib.axes import Axes
 from matplotlib.patches import PathPatch
 
 from app.files.chart_map import outline_of
-from app.files.sheet_page import BODY, GREY, INK, SMALL, Pages, line_mm
+from app.plan_files.sheet_page import BODY, GREY, INK, SMALL, Pages, line_mm
 from geometry.frames import Array, R_fixed_gantry, R_fixed_turntable
 from geometry.scene import Motion, Scene, ScenePart, Side
 

@@ -23,8 +23,8 @@ from app.files.dicom import (
     whole_number,
 )
 from app.files.input_file import bad
-from app.files.turns import snapped_deg, turned
 from app.files.wording import described, one_of, printable
+from app.plan_files.turns import snapped_deg, turned
 from geometry.errors import BadInput, Fault
 from geometry.outlines import LARGEST_MM
 from geometry.treatment.data import PlanField

@@ -4,8 +4,8 @@ from pathlib import Path
 
 import pytest
 
-from app.files.toml_edits import with_item, with_value, without_item, without_value
-from app.files.toml_layout import blocks
+from app.saving.toml_edits import with_item, with_value, without_item, without_value
+from app.saving.toml_layout import blocks
 
 SAMPLES = sorted(Path("sample_rooms").glob("*/*.toml"))
 

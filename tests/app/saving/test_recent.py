@@ -2,7 +2,7 @@ from pathlib import Path
 
 import pytest
 
-from app.recent import MOST_RECENT, forget_files, recent_files, remember_file
+from app.saving.recent import MOST_RECENT, forget_files, recent_files, remember_file
 
 
 def made(folder: Path, *names: str) -> list[Path]:

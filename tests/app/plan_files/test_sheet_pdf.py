@@ -13,11 +13,11 @@ from pypdf import PdfReader
 
 from app.cautions import CAUTIONS
 from app.files.chart_style import drawing_style
-from app.files.check_json import check_values
-from app.files.sheet_page import SMALL, Page, Paper
-from app.files.sheet_pdf import sheet_pages, write_sheet
 from app.plan.dry_run import dry_run
 from app.plan.gaps import MeasuredGap, compare_gaps
+from app.plan_files.check_json import check_values
+from app.plan_files.sheet_page import SMALL, Page, Paper
+from app.plan_files.sheet_pdf import sheet_pages, write_sheet
 from geometry.errors import BadInput
 from geometry.treatment.data import CheckReport
 from tests.app.files.assessments import one_couch_angle, plain, unsurveyed, without_travel

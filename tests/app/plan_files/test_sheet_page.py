@@ -3,7 +3,18 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from app.files.chart_style import drawing_style
-from app.files.sheet_page import MARGIN_MM, PAPERS, Page, Pages, Paper, clean, line_mm, shortened, width_mm, wrapped
+from app.plan_files.sheet_page import (
+    MARGIN_MM,
+    PAPERS,
+    Page,
+    Pages,
+    Paper,
+    clean,
+    line_mm,
+    shortened,
+    width_mm,
+    wrapped,
+)
 
 
 @pytest.mark.parametrize("paper", ["A4", "Letter"])

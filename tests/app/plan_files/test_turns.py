@@ -2,7 +2,7 @@
 
 import pytest
 
-from app.files.turns import snapped_deg, turned
+from app.plan_files.turns import snapped_deg, turned
 
 
 @pytest.mark.parametrize(

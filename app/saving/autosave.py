@@ -21,8 +21,8 @@ from app.files.atomic import write_atomically
 from app.files.input_file import checked_file
 from app.files.setup_limits import EDGE_DEG, STEP_DEG, TOLERANCE_DEG
 from app.files.setup_references import names_dicom, setup_of_text
-from app.files.setup_text import setup_text
 from app.files.toml_source import LARGEST_FILE_BYTES
+from app.saving.setup_text import setup_text
 from geometry.assess import Options
 from geometry.errors import BadInput, GeometryError
 

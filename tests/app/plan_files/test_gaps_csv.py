@@ -5,7 +5,9 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from app.files.gaps_csv import (
+from app.plan.dry_run import dry_run
+from app.plan.gaps import MeasuredGap
+from app.plan_files.gaps_csv import (
     COLUMNS,
     MOST_GAPS,
     gaps_path,
@@ -14,8 +16,6 @@ from app.files.gaps_csv import (
     read_kept_gaps,
     write_gaps_template,
 )
-from app.plan.dry_run import dry_run
-from app.plan.gaps import MeasuredGap
 from geometry.errors import BadInput
 from tests.app.files.reports import provenance_for, small_report
 

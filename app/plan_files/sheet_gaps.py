@@ -3,9 +3,9 @@
 from collections.abc import Sequence
 from typing import Final
 
-from app.files.sheet_page import BODY, INK, SMALL, Pages, line_mm, wrapped
 from app.plan.dry_run_words import angle_text, clearance_text
 from app.plan.gaps import GapRow
+from app.plan_files.sheet_page import BODY, INK, SMALL, Pages, line_mm, wrapped
 
 _SHARES: Final = (0.16, 0.085, 0.085, 0.105, 0.105, 0.11, 0.35)
 _TITLES: Final = ("Field", "Gantry", "Couch", "Measured", "Computed", "Difference", "By, on, remarks")

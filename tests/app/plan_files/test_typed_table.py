@@ -3,7 +3,7 @@ from pathlib import Path
 import pytest
 
 from app.files.delimited import write_table
-from app.files.typed_table import LARGEST_FILE_BYTES, read_table
+from app.plan_files.typed_table import LARGEST_FILE_BYTES, read_table
 from geometry.errors import BadInput
 
 COLUMNS = ("name", "value")

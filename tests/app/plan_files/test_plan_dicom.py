@@ -11,11 +11,11 @@ import pydicom
 import pytest
 from pydicom import Dataset
 
-from app.files import plan_dicom
-from app.files.plan_dicom import read_plan_fields
+from app.plan_files import plan_dicom
+from app.plan_files.plan_dicom import read_plan_fields
 from geometry.errors import BadInput, Fault
 from geometry.treatment.data import PlanField
-from tests.app.plan_files import OWN_PLAN, OWN_STRUCTURES, arc, beam, point, static, write_plan
+from tests.app.made_plans import OWN_PLAN, OWN_STRUCTURES, arc, beam, point, static, write_plan
 from tests.open_data import open_data_folder
 
 

@@ -1,0 +1,1 @@
+"""What is written of a document: the set-up itself, side files, the list of recent files."""
