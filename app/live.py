@@ -26,6 +26,7 @@ class Stage:
     """
 
     setup: Setup
+    options: Options
     scene: Scene
     map: ClearanceMap | None = None
     is_exact: bool = False
@@ -51,12 +52,12 @@ class LiveMaps:
         anchor = self._anchor if self._anchor_options == options else None
         carried = carried_map(anchor, scene) if anchor is not None else None
         if carried is not None:
-            return Stage(setup, scene, carried, is_exact=True)
+            return Stage(setup, options, scene, carried, is_exact=True)
         start = time.monotonic()
         # Not to be cancelled: what follows a hand must show something, however fast the hand moves.
         coarse = exact_map(scene, Options(gantry_step_deg=self.step_deg, couch_step_deg=self.step_deg), Silent())
         self.learn(time.monotonic() - start)
-        return Stage(setup, scene, coarse)
+        return Stage(setup, options, scene, coarse)
 
     def learn(self, seconds: float) -> None:
         """Take the next step up or down where a coarse map took too long, or hardly any time."""

@@ -128,22 +128,36 @@ def exact_pose(scene: Scene, gantry_deg: float, couch_deg: float) -> Pose:
         np.array([couch_branches[0] if couch_branches else couch_deg]),
         threads=1,
     )
-    state = exact_state(float(exact.clearance_mm[0, 0]), float(exact.slack_mm[0, 0]))
-    if scene.no_travel or not gantry_branches or not couch_branches:
-        state = State.NO_TRAVEL
-    machine, other = int(exact.machine_part[0, 0]), int(exact.couch_part[0, 0])
+    pose = _pose_of(exact, 0, 0)
+    if not gantry_branches or not couch_branches:
+        pose = replace(pose, state=State.NO_TRAVEL)
+    return replace(pose, gantry_deg=normalised_deg(gantry_deg), couch_deg=normalised_deg(couch_deg))
+
+
+def pose_on_grid(exact: ClearanceMap, gantry_deg: float, couch_deg: float) -> Pose | None:
+    """Return what `exact_pose` says of a pair of unwrapped angles that an exact map knows; None of any other pair."""
+    column = int(np.abs(exact.gantry_deg - gantry_deg).argmin())
+    row = int(np.abs(exact.couch_deg - couch_deg).argmin())
+    off = max(abs(exact.gantry_deg[column] - gantry_deg), abs(exact.couch_deg[row] - couch_deg))
+    return _pose_of(exact, row, column) if off <= ANGLE_DEG else None
+
+
+def _pose_of(exact: ClearanceMap, row: int, column: int) -> Pose:
+    scene = exact.scene
+    clearance_mm, slack_mm = float(exact.clearance_mm[row, column]), float(exact.slack_mm[row, column])
+    machine, other = int(exact.machine_part[row, column]), int(exact.couch_part[row, column])
     known = machine >= 0
     return Pose(
         scene,
-        normalised_deg(gantry_deg),
-        normalised_deg(couch_deg),
-        float(exact.clearance_mm[0, 0]),
-        float(exact.slack_mm[0, 0]),
-        state,
+        normalised_deg(float(exact.gantry_deg[column])),
+        normalised_deg(float(exact.couch_deg[row])),
+        clearance_mm,
+        slack_mm,
+        State.NO_TRAVEL if scene.no_travel else exact_state(clearance_mm, slack_mm),
         scene.parts[machine] if known else None,
         scene.parts[other] if known else None,
-        exact.machine_point_mm[0, 0] if known else None,
-        exact.couch_point_mm[0, 0] if known else None,
+        exact.machine_point_mm[row, column] if known else None,
+        exact.couch_point_mm[row, column] if known else None,
     )
 
 

@@ -8,6 +8,7 @@ import contextlib
 import datetime
 import json
 import os
+import platform
 import secrets
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass
@@ -15,6 +16,7 @@ from pathlib import Path
 from typing import Any, Final
 
 import platformdirs
+import psutil
 
 from app.document.document import Document, Source
 from app.files.atomic import write_atomically
@@ -130,10 +132,17 @@ def pending_recovery(path: Path | None, folder: Path | None = None) -> Pending:
         if not os.path.lexists(candidate):
             continue
         try:
-            recoveries.append(_recovery(candidate, path))
+            recovery = _recovery(candidate, path)
         except _ERRORS as error:
             reason = " ".join(str(error).split())[:300]
             messages.append(f"Unsaved work in {candidate} cannot be read and is left alone: {reason}")
+        else:
+            if recovery is None:
+                messages.append(
+                    f"Another window is at work on {candidate.name.removesuffix(SUFFIX).removeprefix('.')}."
+                )
+            else:
+                recoveries.append(recovery)
     recoveries.sort(key=lambda recovery: recovery.saved_at, reverse=True)
     return Pending(tuple(recoveries), tuple(messages))
 
@@ -150,14 +159,36 @@ def _content(document: Document) -> dict[str, object]:
         "newline": source.newline,
         "marked": source.marked,
         "options": asdict(document.options),
+        "owner": _this_process(),
         "text": setup_text(document),
     }
 
 
-def _recovery(file: Path, path: Path | None) -> Recovery:
+def _this_process() -> dict[str, object]:
+    """Return by what a process is known again: numbers come back, start times with them do not."""
+    return {"host": platform.node(), "id": os.getpid(), "since": round(psutil.Process().create_time(), 1)}
+
+
+def _is_at_work(owner: object) -> bool:
+    """Tell whether the process that wrote a side file is still running on this computer, and is not this one."""
+    if not isinstance(owner, dict) or owner.get("host") != platform.node() or owner == _this_process():
+        return False
+    number = owner.get("id")
+    if isinstance(number, bool) or not isinstance(number, int):
+        return False
+    try:
+        return bool(round(psutil.Process(number).create_time(), 1) == owner.get("since"))
+    except (psutil.Error, ValueError, OverflowError):
+        return False
+
+
+def _recovery(file: Path, path: Path | None) -> Recovery | None:
+    """Return what a side file holds, None while another window is at work on it."""
     content = json.loads(checked_file(file, _LARGEST_BYTES).read_bytes().decode())
     if not isinstance(content, dict) or content.get("format") != _FORMAT:
         raise ValueError(f"no side file of format {_FORMAT}")
+    if _is_at_work(content.get("owner")):
+        return None
     text, stamp = _kept(content, "text", str), content.get("stamp")
     # Beside its set-up the side file counts for that one, wherever the folder was moved to since.
     folder = Path(_kept(content, "folder", str))

@@ -11,7 +11,7 @@ from app.document.session import Session
 from app.jobs import Jobs
 from app.live import Stage
 from app.window.follower import Follower
-from geometry.assess import Assessment, Pose, exact_pose, proved_pose
+from geometry.assess import Assessment, Pose, exact_pose, pose_on_grid, proved_pose
 from geometry.errors import GeometryError
 from geometry.scene import Scene
 from geometry.spans import Span
@@ -74,7 +74,10 @@ class Desk(QObject):
     @property
     def assessment(self) -> Assessment | None:
         """All that is known of the set-up as it is now; None while something is still being computed."""
-        return self.stage.assessment if self.stage is not None else None
+        document, stage = self.document, self.stage
+        if document is None or stage is None or stage.setup is not document.setup or stage.options != document.options:
+            return None
+        return stage.assessment
 
     @property
     def scene(self) -> Scene | None:
@@ -165,6 +168,12 @@ class Desk(QObject):
             name = self.assessment.scene.setup.name
             self.keep(Kept(name, self.assessment.permitted_region, self.assessment.spans))
 
+    def _known_pose(self) -> Pose | None:
+        """Return the pose from the map, where it is one of its angles: while a hand drags, that is the quick way."""
+        if self.stage is None or self.stage.map is None or not self.is_own_scene:
+            return None
+        return pose_on_grid(self.stage.map, self.gantry_deg, self.couch_deg)
+
     def _on_session(self) -> None:
         document = self.document
         if document is None:
@@ -174,6 +183,8 @@ class Desk(QObject):
         if self._followed != followed:
             self._followed = followed
             self.follower.follow(*followed)
+            # What was said of the pose was said of the set-up before.
+            self._pose_timer.start()
 
     def _on_stage(self, stage: Stage) -> None:
         self.stage = stage
@@ -186,7 +197,7 @@ class Desk(QObject):
         scene = self.scene
         if scene is None:
             return
-        pose = exact_pose(scene, self.gantry_deg, self.couch_deg)
+        pose = self._known_pose() or exact_pose(scene, self.gantry_deg, self.couch_deg)
         assessment = self.assessment if self.is_own_scene else None
         self.pose = pose if assessment is None else proved_pose(assessment, pose)
         self.posed.emit(self.pose)

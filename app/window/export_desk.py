@@ -56,6 +56,8 @@ class ExportDesk(QObject):
 
     def export_map(self) -> None:
         """Ask for a file and write the permitted angles."""
+        if not self._is_proved():
+            return
         path = self._asked("Export the permitted angles", _MAPS, "permitted angles")
         if path is not None:
             self.write_map_to(path)
@@ -71,6 +73,8 @@ class ExportDesk(QObject):
 
     def export_grid(self) -> None:
         """Ask for a file and write every pair of angles."""
+        if not self._is_proved():
+            return
         assessment = self._desk.assessment
         path = self._asked("Export every pair of angles", {"Every pair (*.csv)": ".csv"}, "every pair")
         if path is not None and assessment is not None:
@@ -125,6 +129,12 @@ class ExportDesk(QObject):
         printer.setPageOrientation(QPageLayout.Orientation.Landscape)
         if QPrintDialog(printer, self._window).exec():
             paint_page(page, printer)
+
+    def _is_proved(self) -> bool:
+        """Tell whether there is a proof to write down, and say so where there is none."""
+        if self._desk.assessment is None:
+            self.failed.emit(_NOT_YET)
+        return self._desk.assessment is not None
 
     def _asked(self, title: str, kinds: dict[str, str], what: str) -> Path | None:
         return self._asked_kind(title, kinds, what)[0]

@@ -226,16 +226,27 @@ class FileDesk(QObject):
             "Go on with the changes that were not saved?",
             f"The program ended while “{found.name}” was being changed, on "
             f"{found.saved_at.astimezone():%Y-%m-%d at %H:%M}. The changes are still there.",
-            _Button.Yes | _Button.No,
+            _Button.Yes | _Button.Discard | _Button.Ignore,
+            _Button.Ignore,
         )
-        if answer == _Button.Yes:
-            return True
-        discard(found.side_file)
-        return False
+        if answer == _Button.Discard:
+            discard(found.side_file)
+        return answer == _Button.Yes
 
-    def _ask(self, text: str, detail: str, buttons: QMessageBox.StandardButton) -> QMessageBox.StandardButton:
+    def _ask(
+        self,
+        text: str,
+        detail: str,
+        buttons: QMessageBox.StandardButton,
+        escape: QMessageBox.StandardButton = _Button.Cancel,
+    ) -> QMessageBox.StandardButton:
+        """Ask, and return the answer; `escape` is that of somebody who would rather not say."""
         box = QMessageBox(QMessageBox.Icon.NoIcon, "Wideberth", text, buttons, self._window)
         box.setInformativeText(detail)
+        box.setEscapeButton(escape)
+        later = box.button(_Button.Ignore)
+        if later is not None:
+            later.setText("Later")
         return _Button(box.exec())
 
     def _tell_unreadable(self, error: Exception) -> None:

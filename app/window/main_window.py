@@ -4,7 +4,7 @@ from pathlib import Path
 
 from PySide6.QtCore import QTimer
 from PySide6.QtGui import QCloseEvent, QDragEnterEvent, QDropEvent, QGuiApplication
-from PySide6.QtWidgets import QApplication, QFileDialog, QLabel, QMainWindow, QProgressBar, QStackedWidget
+from PySide6.QtWidgets import QApplication, QFileDialog, QLabel, QMainWindow, QMessageBox, QProgressBar, QStackedWidget
 
 from app.document.document import Document
 from app.jobs import UNKNOWN, Jobs
@@ -92,10 +92,11 @@ class MainWindow(QMainWindow):
         self.fields.directions_changed.connect(self.workspace.discs.show_fields)
         self.fields.chosen_changed.connect(self.shading.set_field)
         self.fields.scene_wanted.connect(self.desk.show_instead)
+        self.workspace.turned_by_hand.connect(self.fields.let_go)
         self.workspace.fields.open_wanted.connect(self.browse_plan)
         for source in (self.files, self.exports, self.fields, self.gaps):
             source.told.connect(self.tell)
-        self.exports.failed.connect(self.tell)
+        self.exports.failed.connect(self.warn)
 
     def _commands(self) -> Commands:
         return Commands(
@@ -116,6 +117,11 @@ class MainWindow(QMainWindow):
             self.statusBar().showMessage(text, _TOLD_MS)
         else:
             self.statusBar().clearMessage()
+
+    def warn(self, text: str) -> None:
+        """Say what went wrong so that it is not overlooked."""
+        box = QMessageBox(QMessageBox.Icon.NoIcon, "Wideberth", text, QMessageBox.StandardButton.Close, self)
+        box.exec()
 
     def show_pointed(self, text: str) -> None:
         """Say what the pointer is on, as long as it is."""
@@ -191,7 +197,7 @@ class MainWindow(QMainWindow):
         if path is not None:
             event.acceptProposedAction()
             # After the drag has ended: a question in between would hold up the program that it came from.
-            opened = self.files.open if path.name.endswith(_SUFFIX) else self.open_plan
+            opened = self.files.open if path.name.lower().endswith(_SUFFIX) else self.open_plan
             QTimer.singleShot(0, lambda: opened(path))
 
     def _restore(self) -> None:

@@ -29,10 +29,11 @@ class Proof(Enum):
     OF_FIELD = "of the field"
 
 
+_AS_FIELD = "as the chosen field has it, not proved: "
 _PERMITTED = {
     Proof.DONE: "Permitted",
     Proof.UNDER_WAY: "Proof under way",
-    Proof.OF_FIELD: "Enough here; see the field's verdict",
+    Proof.OF_FIELD: "Enough at this pose alone",
 }
 
 
@@ -103,7 +104,7 @@ class PoseBar(QWidget):
             self.detail.setText("")
             return
         self.state.setText(_SAID[pose.state] if pose.state is not State.PERMITTED else _PERMITTED[proof])
-        self.detail.setText(("with what this field has fitted: " if proof is Proof.OF_FIELD else "") + _detail(pose))
+        self.detail.setText((_AS_FIELD if proof is Proof.OF_FIELD else "") + _detail(pose))
         self.detail.setToolTip(self.detail.text())
 
 

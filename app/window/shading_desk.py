@@ -10,6 +10,7 @@ from PySide6.QtCore import QObject, QTimer, Signal
 
 from app.clearance_scale import EDGES_MM
 from app.jobs import Job, Publish
+from app.plan.dry_run_words import clearance_text
 from app.window.desk import Desk
 from app.window.workspace import Workspace
 from geometry.frames import R_fixed_gantry, R_fixed_turntable, normalised_deg
@@ -91,9 +92,15 @@ class ShadingDesk(QObject):
         if self._kind is Shading.NONE or stage is None or stage.assessment is None:
             return
         over = self._over()
-        asked = (stage.scene, over)
-        if over is None or asked == self._asked:
+        if over is None:
+            self._clear()
+            self._view.set_caption("Choose a field of a plan to shade by it")
             return
+        asked = (stage.scene, over)
+        if asked == self._asked:
+            return
+        if self._found is not None and not isinstance(over, type(self._found.over)):
+            self._clear()
         self._asked = asked
         work = partial(_approaches, stage.scene, over)
         self._desk.jobs.start_instead(Job(LANE, work, self._show, label="nearest approach"))
@@ -105,6 +112,7 @@ class ShadingDesk(QObject):
         self._view.set_shading(
             {label: (part.points_mm, part.triangles, part.distance_mm) for label, part in found.parts.items()}
         )
+        self._view.set_caption(_caption(found.over))
         marks = tightest_marks(found, _MARKS)
         self._view.set_tight_marks([(mark.part.label, mark.point_mm, _words(mark.distance_mm)) for mark in marks])
 
@@ -113,6 +121,7 @@ class ShadingDesk(QObject):
         self._asked = None
         self._view.set_shading(None)
         self._view.set_tight_marks([])
+        self._view.set_caption("")
 
     def _place(self, label: str, point: Array) -> tuple[float, float, float] | None:
         """Return distance and angles of the surface point nearest to a place, in the system of the part's motion."""
@@ -146,9 +155,16 @@ class ShadingDesk(QObject):
         return R_fixed_turntable(self._desk.couch_deg) if motion is Motion.TURNTABLE else np.eye(3)
 
 
+def _caption(over: Over) -> str:
+    """Return what the shading is of."""
+    if isinstance(over, GantryTurn):
+        return f"Nearest approach over the gantry's turn at couch {normalised_deg(over.couch_deg):g}°"
+    return "Nearest approach over " + ("the chosen field" if isinstance(over, Along) else "all angles")
+
+
 def _words(distance_mm: float) -> str:
     """Return a distance for a mark; rounded down, so that it never claims too much."""
-    return "contact" if distance_mm == 0.0 else f"{math.floor(distance_mm)} mm"
+    return "contact" if distance_mm == 0.0 else clearance_text(distance_mm, 0)
 
 
 def _approaches(scene: Scene, over: Over, progress: Progress, _publish: Publish) -> Approaches:

@@ -1,6 +1,5 @@
 """The desk laid out: set-up, room, angles, and what stands in the way. Passes data on; computes nothing."""
 
-import math
 from collections.abc import Sequence
 
 from PySide6.QtCore import Qt, QTimer, Signal
@@ -8,6 +7,7 @@ from PySide6.QtWidgets import QSplitter, QStackedWidget, QTabWidget, QVBoxLayout
 
 from app.document.document import Document
 from app.live import Stage
+from app.plan.dry_run_words import clearance_text
 from app.window.banner import Banner
 from app.window.chart.angle_chart import AngleChart
 from app.window.chart.clearance_curve import ClearanceCurve
@@ -35,9 +35,13 @@ _REFRESH_MS = 40
 
 
 class Workspace(QWidget):
-    """Everything about one set-up. `pointed` tells what the pointer is on, in words, for the status line."""
+    """Everything about one set-up.
+
+    `pointed` tells what the pointer is on, in words; `turned_by_hand` that a person chose a pose.
+    """
 
     pointed = Signal(str)
+    turned_by_hand = Signal()
 
     def __init__(self, desk: Desk, parent: QWidget | None = None) -> None:
         super().__init__(parent)
@@ -106,7 +110,7 @@ class Workspace(QWidget):
         desk = self._desk
         desk.follower.ahead = self.scene_view.prepare
         desk.opened.connect(self._on_opened)
-        desk.changed.connect(self._on_changed)
+        desk.changed.connect(lambda _: self._on_changed())
         desk.staged.connect(self._on_staged)
         desk.scene_shown.connect(self.show_scene)
         desk.turned.connect(lambda *_: self._show_angles())
@@ -115,7 +119,7 @@ class Workspace(QWidget):
         desk.kept_changed.connect(self._on_kept)
         desk.refused.connect(lambda text: self.setup_panel.set_messages((text,)))
         for widget in (self.pose_bar, self.chart, self.curve, self.discs, self.spans):
-            widget.pose_wanted.connect(desk.go_to)
+            widget.pose_wanted.connect(self._turn_by_hand)
         self.spans.span_clicked.connect(self._show_span)
         for widget in (self.chart, self.curve):
             widget.axis_moved.connect(self.spans.set_axis)
@@ -154,6 +158,10 @@ class Workspace(QWidget):
         self._with_beam = visible
         document = self._desk.document
         self.scene_view.set_beam(visible, collimator_deg=document.setup.collimator_deg if document else None)
+
+    def _turn_by_hand(self, gantry_deg: float, couch_deg: float) -> None:
+        self.turned_by_hand.emit()
+        self._desk.go_to(gantry_deg, couch_deg)
 
     def _show_span(self, span: Span) -> None:
         """Show where a span begins and ends in the room, until another couch angle or set-up is looked at."""
@@ -197,15 +205,15 @@ class Workspace(QWidget):
         self._show_angles()
         self._show_document()
 
-    def _on_changed(self, document: Document) -> None:
+    def _on_changed(self) -> None:
         # A hand makes more edits than anybody can read.
         if not self._refresh.isActive():
             self._refresh.start()
         # What is drawn was proved for the set-up before. It is told once, not at every step of a drag.
-        assessment = self._desk.assessment
-        if assessment is not None and not self._stale and assessment.scene.setup != document.setup:
+        stage = self._desk.stage
+        if stage is not None and stage.assessment is not None and not self._stale and self._desk.assessment is None:
             self._stale = True
-            self._show_region(assessment, stale=True)
+            self._show_region(stage.assessment, stale=True)
 
     def _show_document(self) -> None:
         document = self._desk.document
@@ -269,11 +277,13 @@ class Workspace(QWidget):
         if not self._desk.is_own_scene:
             proof = Proof.OF_FIELD
         self.pose_bar.show_pose(pose, proof)
-        self._show_witness(pose)
-        if assessment is not None:
-            self._show_spans(assessment, stale=False)
+        self.show_witness(pose)
+        stage = self._desk.stage
+        if stage is not None and stage.assessment is not None:
+            self._show_spans(stage.assessment, stale=self._stale)
 
-    def _show_witness(self, pose: Pose) -> None:
+    def show_witness(self, pose: Pose, before: str = "") -> None:
+        """Show the nearest places of a pose, or the parts in contact; `before` goes before the words."""
         machine, other = pose.machine_part, pose.couch_part
         if machine is None or other is None or pose.state is State.NO_TRAVEL:
             self.scene_view.mark_parts(())
@@ -281,8 +291,8 @@ class Workspace(QWidget):
             return
         in_contact = pose.state is State.CONTACT
         self.scene_view.mark_parts((machine.label, other.label) if in_contact else ())
-        words = "contact" if in_contact else f"{math.floor(pose.clearance_mm)} mm"
-        text = f"{words}\n{machine.name} – {other.name}"
+        words = "contact" if in_contact else clearance_text(pose.clearance_mm, 0)
+        text = f"{before}{words}\n{machine.name} – {other.name}"
         self.scene_view.set_witness(pose.machine_point_mm, pose.couch_point_mm, text, pose.state)
 
     def _on_kept(self, kept: Kept | None) -> None:

@@ -87,7 +87,8 @@ def folded(region: shapely.Geometry) -> shapely.Geometry:
             shift = turned + 360.0 * turn
             if y0 + shift < 180.0 and y1 + shift > -180.0:
                 pieces.append(affine_transform(strip, [sense, 0.0, 0.0, 1.0, -sense * start, shift]))
-    return shapely.intersection(_areas(shapely.union_all(pieces, grid_size=_SAME_DEG)), _FOLDED)
+    # Where areas meet the fold along a line alone, that line is no part of the region.
+    return _areas(shapely.intersection(_areas(shapely.union_all(pieces, grid_size=_SAME_DEG)), _FOLDED))
 
 
 def solid_angle_sr(region: shapely.Geometry) -> float:

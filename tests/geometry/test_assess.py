@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 
 from geometry import assess as assessing
-from geometry.assess import Assessment, Options, assess, assess_pose
+from geometry.assess import Assessment, Options, assess, assess_pose, exact_map, exact_pose, pose_on_grid
 from geometry.states import CODE_OF, STATES, State
 from tests.reference.attacks import any_options, any_setup
 from tests.reference.samples import SETUPS, sample_scene
@@ -74,3 +74,15 @@ def test_grid_pose_and_spans_agree_in_random_rooms(seed: int, monkeypatch: pytes
     found = assess(any_setup(rng), options)
     assert_spans_and_grid_agree(found)
     assert_pose_and_grid_agree(found, monkeypatch, rng)
+
+
+def test_a_pose_that_a_map_knows_is_that_pose() -> None:
+    scene = sample_scene("c_arm_close/breast.setup.toml")
+    exact = exact_map(scene, Options(gantry_step_deg=15.0, couch_step_deg=15.0))
+    for gantry, couch in ((0.0, 0.0), (45.0, -30.0), (-90.0, 60.0)):
+        known, plain = pose_on_grid(exact, gantry, couch), exact_pose(scene, gantry, couch)
+        assert known is not None
+        assert (known.gantry_deg, known.couch_deg, known.state) == (plain.gantry_deg, plain.couch_deg, plain.state)
+        assert known.clearance_mm == pytest.approx(plain.clearance_mm, abs=1e-6)
+        assert known.slack_mm == pytest.approx(plain.slack_mm, abs=1e-6)
+    assert pose_on_grid(exact, 45.1, -30.0) is None

@@ -10,6 +10,7 @@ from PySide6.QtCore import QPointF, QRectF, QSizeF, Qt
 from PySide6.QtGui import QColor, QFont, QFontMetricsF, QImage, QPainter, QPainterPath, QPen
 
 from app.clearance_scale import EDGE_COLOURS, places
+from app.plan.dry_run_words import required_text
 from app.window.chart.legend import LegendItem, line_item, paint_items, permitted_item, state_item
 from app.window.chart.paint import cased_stroke, cased_text, dashed, font_of, polygon_of, texture, texture_brush
 from app.window.chart.paint_axes import (
@@ -193,9 +194,9 @@ def _paint_required(painter: QPainter, frame: Frame, content: CurveContent, them
         pen = dashed(QPen(theme.colour("required"), 1.5), 4.0, 2.2)
         cased_stroke(painter, path, pen, theme.colour("halo"), 1.6)
         words = {None: "required", False: "required, machine and room", True: "required, with patient or device"}
-        text = f"{words[with_patient]}: {level:.1f} mm"
+        text = f"{words[with_patient]}: {required_text(level)}"
         if metrics.horizontalAdvance(text) > frame.plot.width() * 0.6:
-            text = f"required: {level:.1f} mm"
+            text = f"required: {required_text(level)}"
         below = with_patient is False
         x = frame.plot.right() - 6.0 - metrics.horizontalAdvance(text) / 2.0
         painter.save()

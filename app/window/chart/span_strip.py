@@ -9,6 +9,7 @@ from PySide6.QtGui import QHelpEvent, QKeyEvent, QMouseEvent, QPainter, QPaintEv
 from PySide6.QtWidgets import QSizePolicy, QToolTip, QWidget
 
 from app.files.readings import number_text
+from app.plan.dry_run_words import required_text
 from app.window.chart.paint_spans import Strip, StripLayout, height_of, least_words
 from app.window.chart.reading import IEC, angle_words, label_of
 from app.window.theme import LIGHT, Theme
@@ -102,7 +103,7 @@ class SpanStrip(QWidget):
         if not self._readout.is_iec():
             shown = [angle_words(angle, self._readout) for angle in (span.gantry_from_deg, span.gantry_to_deg)]
             lines.append(f"machine shows {shown[0]} to {shown[1]}")
-        lines.append(f"At least {least_words(span)} mm, {span.required_mm:.1f} mm required")
+        lines.append(f"At least {least_words(span)} mm, {required_text(span.required_mm)} required")
         parts = (label_of(self._labels, span.machine_part), label_of(self._labels, span.couch_part))
         if all(parts):
             lines.append(f"{parts[0]} – {parts[1]}")

@@ -139,6 +139,12 @@ class FieldsDesk(QObject):
         self.gaps = tuple(gaps)
         self._show_gaps()
 
+    def let_go(self) -> None:
+        """Look at no field any more: the document's own room again."""
+        if not self.player.is_playing and self._shown_scene is not None:
+            self._panel.choose_field(None)
+            self._show_scene(None)
+
     def shutdown(self) -> None:
         """Stop every timer."""
         self._timer.stop()
@@ -210,6 +216,8 @@ class FieldsDesk(QObject):
             return
         self._is_stale = stale
         self._panel.set_stale(stale)
+        # The room of a field of the set-up before would go on saying what no longer holds.
+        self._show_scene(None)
         self._show_curve()
         self._show_fields()
 
@@ -243,7 +251,11 @@ class FieldsDesk(QObject):
         self.chosen_changed.emit(() if check is None else check.points_deg)
         if self._plays_whole and self.player.is_playing:
             return
-        self._show_scene(None if check is None else check.scene)
+        self._show_scene(None if check is None or self._is_stale else check.scene)
+        if check is not None and not self._is_stale:
+            place = check.place
+            at = (place.gantry_deg, place.couch_deg) if place is not None else check.points_deg[0]
+            self._desk.go_to(*at)
         if not self._plays_whole:
             self._show_curve()
 

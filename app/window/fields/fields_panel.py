@@ -2,7 +2,7 @@
 
 from collections.abc import Sequence
 
-from PySide6.QtCore import Qt, Signal
+from PySide6.QtCore import QModelIndex, Qt, Signal
 from PySide6.QtWidgets import (
     QCheckBox,
     QComboBox,
@@ -214,9 +214,12 @@ class FieldsPanel(QWidget):
         row = self.list.chosen()
         return row.place if row is not None and row.kind == "field" and self._report is not None else None
 
-    def choose_field(self, place: int) -> None:
-        """Choose a field by its place in the report."""
-        self.list.choose("field", place)
+    def choose_field(self, place: int | None) -> None:
+        """Choose a field by its place in the report, or none."""
+        if place is None:
+            self.list.setCurrentIndex(QModelIndex())
+        else:
+            self.list.choose("field", place)
 
     def commit(self) -> None:
         """Ask for what was typed and not asked for yet."""

@@ -190,5 +190,5 @@ def obstacle_words(obstacle: Obstacle) -> str:
         return f"{parts}: {near} mm, {required} mm required"
     missing = f"{millimetres(obstacle.missing_mm, up=True)} mm missing"
     if obstacle.clearance_mm == 0.0:
-        return f"{parts}: contact, {missing}"
+        return f"{parts}: contact, at least {missing}"
     return f"{parts}: {missing}, {near} of {required} mm"

@@ -10,7 +10,7 @@ from app.document.fields import Edit
 from app.jobs import Job, Publish
 from app.window.desk import Desk
 from app.window.workspace import Workspace
-from geometry.assess import Assessment, Options, Pose
+from geometry.assess import Assessment, Options, Pose, exact_pose
 from geometry.progress import Progress
 from geometry.remedies.find import Obstacle, Remedy, find_remedies, obstacles_at
 from geometry.scene import Scene, build_scene
@@ -98,10 +98,13 @@ class RemedyDesk(QObject):
         if remedy is None:
             self._workspace.show_scene(scene)
             self._workspace.scene_view.set_pose(self._desk.gantry_deg, self._desk.couch_deg)
+            if self._desk.pose is not None:
+                self._workspace.show_witness(self._desk.pose)
             return
-        same = remedy.setup is scene.setup
-        self._workspace.show_scene(scene if same else build_scene(remedy.setup))
+        previewed = scene if remedy.setup is scene.setup else build_scene(remedy.setup)
+        self._workspace.show_scene(previewed)
         self._workspace.scene_view.set_pose(remedy.gantry_deg, remedy.couch_deg)
+        self._workspace.show_witness(exact_pose(previewed, remedy.gantry_deg, remedy.couch_deg), "Preview: ")
 
     def _apply(self, remedy: Remedy) -> None:
         scene = self._desk.scene

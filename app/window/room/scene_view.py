@@ -44,6 +44,7 @@ class SceneView(SceneSteering):
         self._stage = Stage(theme)
         self._witness: Witness | None = None
         self._arc: Arc | None = None
+        self._caption = ""
         self._marked: tuple[str, ...] = ()
         self._tight: tuple[tuple[str, Array, str], ...] = ()
         self._pointed = ""
@@ -103,6 +104,11 @@ class SceneView(SceneSteering):
             angles = np.linspace(gantry_from_deg, gantry_to_deg, steps + 1)
             points = [_ARC_MM * source_direction_fixed(float(angle)) for angle in angles]
             self._arc = Arc(np.array(points), texts)
+        self.overlay_changed()
+
+    def set_caption(self, text: str) -> None:
+        """Say in the corner what is shown, beyond the room itself; empty for nothing."""
+        self._caption = text
         self.overlay_changed()
 
     def mark_parts(self, labels: Sequence[str]) -> None:
@@ -175,7 +181,7 @@ class SceneView(SceneSteering):
             tight,
             moved(T_fixed_gantry, stage.beam.axis(stage.source_axis_mm)) if beam else nothing,
             moved(T_fixed_gantry, stage.beam.outline()) if beam else nothing,
-            WITHOUT_OPENGL if self.draws_without_opengl() else "",
+            ". ".join(text for text in (self._caption, WITHOUT_OPENGL if self.draws_without_opengl() else "") if text),
             self._arc,
         )
 

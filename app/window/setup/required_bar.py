@@ -7,6 +7,7 @@ from PySide6.QtCore import QEvent, QPointF, QRectF, QSize, Qt
 from PySide6.QtGui import QColor, QHelpEvent, QPainter, QPaintEvent, QPen
 from PySide6.QtWidgets import QSizePolicy, QToolTip, QWidget
 
+from app.plan.dry_run_words import required_text
 from app.window.theme import LIGHT, Theme
 from geometry.setup import Required
 
@@ -64,7 +65,7 @@ class RequiredBar(QWidget):
     def lines(self) -> tuple[str, ...]:
         """Return what the bars say, in words."""
         return tuple(
-            f"{name}: {_total_mm(row):.1f} mm{', most from ' + _heaviest(row) if _heaviest(row) else ''}"
+            f"{name}: {required_text(_total_mm(row))}{', most from ' + _heaviest(row) if _heaviest(row) else ''}"
             for name, row in zip(_NAMES, self._rows, strict=False)
         )
 
@@ -102,7 +103,7 @@ class RequiredBar(QWidget):
             painter.setPen(self._theme.colour("ink"))
             words = QRectF(0, top, self.width(), line)
             painter.drawText(words, Qt.AlignmentFlag.AlignLeft, _NAMES[i])
-            painter.drawText(words, Qt.AlignmentFlag.AlignRight, f"{_total_mm(row):.1f} mm")
+            painter.drawText(words, Qt.AlignmentFlag.AlignRight, required_text(_total_mm(row)))
             for share, rect in zip(row, rects, strict=True):
                 painter.fillRect(rect, self._colour(share, row))
             painter.setPen(QPen(self._theme.colour("panel"), 1.2))

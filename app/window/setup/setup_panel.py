@@ -8,6 +8,7 @@ from PySide6.QtWidgets import QLabel, QScrollArea, QSizePolicy, QVBoxLayout, QWi
 from app.document import patient_fields, setup_fields
 from app.document.document import Document
 from app.document.fields import NumberField
+from app.plan.dry_run_words import required_text
 from app.window.setup.devices import DevicesEditor
 from app.window.setup.fitted import FittedEditor, fitted_summary
 from app.window.setup.group import Group
@@ -152,11 +153,7 @@ class SetupPanel(QWidget):
             *(NumberRow(field) for field in patient_fields.BODY_SIZES),
         ]
         self._add(self.body, *self._body_rows[:7])
-        heading = QLabel("Measured on this patient, in place of averages")
-        heading.setObjectName("unit")
-        heading.setWordWrap(True)
-        heading.setContentsMargins(12, 6, 0, 0)
-        self.body.content.addWidget(heading)
+        self.body.content.addWidget(_hint("Measured on this patient, in place of averages"))
         self._add(self.body, *self._body_rows[7:])
         self.device_group.content.addWidget(self.devices)
         self.fitted_group.content.addWidget(self.fitted)
@@ -169,6 +166,7 @@ class SetupPanel(QWidget):
         self.required.content.addWidget(self.components)
         self.required.content.addWidget(self.bar)
         self._add(self.readouts, *(NumberRow(field) for field in setup_fields.OPTIONS))
+        self.readouts.content.addWidget(_hint("They hold until another set-up is opened; its file does not keep them."))
         self._add(self.notes, TextRow(setup_fields.NOTES, lines=5, is_note=True))
 
     def _add(self, group: Group, *rows: Row) -> None:
@@ -238,7 +236,7 @@ def _summaries(document: Document) -> tuple[str, ...]:
     if body is not None and body.slope_deg:
         person += f", slope {body.slope_deg:g}°"
     required = setup.required
-    pairs = [f"{required.of_pair_mm(with_patient):.1f}" for with_patient in (False, True)]
+    pairs = [required_text(required.of_pair_mm(with_patient)).removesuffix(" mm") for with_patient in (False, True)]
     options = document.options
     return (
         f"{setup.patient_position}, {setup.name}",
@@ -267,3 +265,11 @@ def _style(theme: Theme) -> str:
         f"#note {{ color: {theme.ink}; background: {theme.canvas}; border-bottom: 1px solid {theme.line};"
         " padding: 5px 10px; }"
     )
+
+
+def _hint(text: str) -> QLabel:
+    hint = QLabel(text)
+    hint.setObjectName("unit")
+    hint.setWordWrap(True)
+    hint.setContentsMargins(12, 6, 0, 0)
+    return hint

@@ -1,7 +1,11 @@
 import json
 import os
+import subprocess
+import sys
+from dataclasses import replace
 from pathlib import Path
 
+import psutil
 import pytest
 
 from app.document.device_edits import add_box
@@ -226,3 +230,23 @@ def test_a_side_file_that_fails_halfway_leaves_the_one_before(
         autosave.write(EDIT(document))
     assert file.read_bytes() == before
     assert {entry.name for entry in path.parent.iterdir()} == {"test.room.toml", "a.setup.toml", file.name}
+
+
+def test_work_of_a_window_that_still_runs_is_left_alone(
+    document: Document, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    file = Autosave(tmp_path).write(replace(document, path=None, stamp=None))
+    assert len(pending_recovery(None, tmp_path).recoveries) == 1, "this very process may take up its own"
+    content = json.loads(file.read_text(encoding="utf-8"))
+    other = subprocess.Popen([sys.executable, "-c", "input()"], stdin=subprocess.PIPE)
+    try:
+        content["owner"] |= {"id": other.pid, "since": round(psutil.Process(other.pid).create_time(), 1)}
+        file.write_text(json.dumps(content), encoding="utf-8")
+        pending = pending_recovery(None, tmp_path)
+        assert pending.recoveries == ()
+        assert "Another window is at work" in pending.messages[0]
+    finally:
+        other.communicate(b"\n")
+    assert len(pending_recovery(None, tmp_path).recoveries) == 1, "that window has gone"
+    monkeypatch.setattr("platform.node", lambda: "another computer")
+    assert len(pending_recovery(None, tmp_path).recoveries) == 1

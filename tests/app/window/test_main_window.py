@@ -191,3 +191,37 @@ def test_a_click_on_a_span_shows_its_ends_in_the_room(window: MainWindow) -> Non
     window.desk.go_to(0.0, 10.0)
     pause(0.1)
     assert view.overlay().arc is None
+
+
+def test_nothing_is_called_permitted_between_an_edit_and_its_proof(window: MainWindow) -> None:
+    opened(window)
+    assert window.workspace.pose_bar.state.text() == "Permitted"
+    window.desk.edit(set_value("required.fixed_mm", 20.0), "required")
+    pause(0.01)
+    assert window.desk.assessment is None
+    assert window.workspace.pose_bar.state.text() != "Permitted"
+    settle(window)
+    assert window.workspace.pose_bar.state.text() == "Permitted"
+
+
+@pytest.mark.parametrize("name", ["c_arm_close/breast", "c_arm_wide/tall_heavy"])
+def test_directions_are_shown_of_every_kind_of_region(window: MainWindow, name: str) -> None:
+    opened(window, ROOMS / f"{name}.setup.toml")
+    window.workspace.right_tabs.setCurrentWidget(window.workspace.discs)
+    settle(window)
+    image = window.workspace.discs.grab().toImage()
+    colours = {image.pixelColor(x, image.height() // 2).name() for x in range(0, image.width(), 3)}
+    assert len(colours) > 10
+
+
+def test_a_preview_shows_its_own_nearest_places(window: MainWindow) -> None:
+    opened(window, ROOMS / "c_arm_close" / "breast.setup.toml")
+    window.desk.go_to(95.0, 40.0)
+    settle(window)
+    remedy = window.workspace.remedies.remedies()[0]
+    assert window.desk.pose.state is State.CONTACT
+    window.workspace.remedies.preview_wanted.emit(remedy)
+    assert window.workspace.scene_view.overlay().witness.text.startswith("Preview: ")
+    assert not window.workspace.scene_view.overlay().marked
+    window.workspace.remedies.preview_wanted.emit(None)
+    assert "contact" in window.workspace.scene_view.overlay().witness.text

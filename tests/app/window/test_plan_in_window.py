@@ -44,10 +44,23 @@ def test_a_field_with_another_collimator_is_shown_as_it_is(planned: MainWindow) 
     assert not planned.desk.is_own_scene
     assert planned.desk.scene.setup.collimator_deg == 30.0
     assert planned.desk.pose.scene is planned.desk.scene
-    assert "verdict" in planned.workspace.pose_bar.state.text()
-    planned.workspace.fields.choose_field(0)
+    assert planned.workspace.pose_bar.state.text() == "Enough at this pose alone"
+    nearest = planned.fields.checked.report.fields[1].place
+    assert (planned.desk.gantry_deg, planned.desk.couch_deg) == pytest.approx((nearest.gantry_deg, nearest.couch_deg))
+    planned.workspace.chart.pose_wanted.emit(5.0, 5.0)
     pause(0.2)
     assert planned.desk.is_own_scene
+    assert planned.workspace.fields.chosen_field() is None
+
+
+def test_an_edit_ends_the_look_at_a_fields_own_room(planned: MainWindow) -> None:
+    planned.workspace.fields.choose_field(1)
+    pause(0.2)
+    planned.desk.edit(set_value("table.lateral_mm", 10.0), "table")
+    assert planned.desk.is_own_scene
+    pause(0.05)
+    assert planned.workspace.pose_bar.state.text() in {"Proof under way", "Permitted"}
+    settle(planned)
 
 
 def test_verdicts_follow_the_set_up(planned: MainWindow) -> None:

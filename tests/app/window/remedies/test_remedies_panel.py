@@ -92,7 +92,9 @@ def test_the_parts_are_named_with_what_is_missing(panel: RemediesPanel) -> None:
     _, pose, obstacles = blocked(445.0, 460.0)
     panel.show_pose(pose, obstacles)
     panel.set_busy(True)
-    assert "head – block 1: contact, 10.0 mm missing\nhead – block 0: 5.0 mm missing, 5.0 of 10.0 mm" in texts(panel)
+    assert "head – block 1: contact, at least 10.0 mm missing\nhead – block 0: 5.0 mm missing, 5.0 of 10.0 mm" in texts(
+        panel
+    )
     assert "Trying single changes …" in texts(panel)
     panel.set_busy(False)
     assert "None of the single changes" in texts(panel)

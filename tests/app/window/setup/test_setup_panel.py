@@ -436,7 +436,7 @@ def test_a_folded_group_sums_itself_up(breast: Bench) -> None:
     group.header.setFocus()
     QTest.keyClick(group.header, Qt.Key.Key_Space)
     assert not group.body.isVisible()
-    assert "22.8 and 29.6 mm" in breast.panel.group_named("Required clearance").header.accessibleDescription()
+    assert "22.9 and 29.6 mm" in breast.panel.group_named("Required clearance").header.accessibleDescription()
 
 
 # Devices
@@ -582,7 +582,7 @@ def test_shares_of_the_required_clearance_add_up() -> None:
 def test_the_bars_say_what_weighs_most(breast: Bench) -> None:
     bar = breast.panel.bar
     assert bar.lines() == (
-        "Machine alone: 22.8 mm, most from room model, 59 %",
+        "Machine alone: 22.9 mm, most from room model, 59 %",
         "With patient or device: 29.6 mm, most from assumed anatomy, 47 %",
     )
     breast.show(add_component("wind", 20.0))
