@@ -5,6 +5,7 @@ while something is under way.
 """
 
 import queue
+import sys
 import threading
 from collections.abc import Callable
 from dataclasses import dataclass, field
@@ -22,6 +23,7 @@ Receive = Callable[[Any], object]
 # In place of a fraction, where a job has yet to tell how far it is.
 UNKNOWN: Final = -1.0
 _POLL_MS: Final = 5
+_SWITCH_S: Final = 0.0005
 
 
 def _ignore(_: object) -> None:
@@ -99,6 +101,8 @@ class Jobs(QObject):
 
     def __init__(self, parent: QObject | None = None) -> None:
         super().__init__(parent)
+        # The GUI's thread paints in Python; work that returns from compiled code should not wait 5 ms for its turn.
+        sys.setswitchinterval(_SWITCH_S)
         self._messages: queue.SimpleQueue[tuple[Job, str, Any]] = queue.SimpleQueue()
         self._lanes: dict[str, _Lane] = {}
         self._active: dict[str, list[Job]] = {}

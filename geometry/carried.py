@@ -21,7 +21,7 @@ from geometry.scene import Motion, Scene
 from geometry.scene_shifts import rigid_bodies, shifts_between
 from geometry.sweep import POSES_OF_CALL, ClearanceMap, angles_of, merge_plane, sweep_plane
 from geometry.sweep_kernel import Angles, Field
-from geometry.tasks import Tiles, run_tiles
+from geometry.tasks import CALLS, Tiles, run_tiles
 
 Array = NDArray[np.float64]
 
@@ -29,6 +29,9 @@ Array = NDArray[np.float64]
 LIMIT_MM = 20.0
 # Poses each way, gantry and couch, that share a sifting of the pairs.
 BLOCK = (6, 12)
+# Of one call into compiled code, and how many calls at least: a hand waits for all of them, and none takes long.
+POSES_OF_CARRY = 20_000
+CARRIES = 4
 
 
 @dataclass(frozen=True, eq=False)
@@ -176,7 +179,7 @@ def _kept(
         grid = gantry, couch, hand, BLOCK
         anchor_tiles(plane.a, plane.b, bodies, plane.pairs, *grid, limit_mm, known, memory, lists, normals, kept)
 
-    calls = rows * columns // POSES_OF_CALL
+    calls = max(rows * columns // POSES_OF_CALL, CALLS)
     run_tiles(work, _tiles(rows, columns), plane.pairs, progress, "what stays near", threads, calls)
     return kept
 
@@ -200,7 +203,7 @@ def _carried(turning: Turning, moved: Plane, shift: Array, progress: Progress, t
         grid = gantry, couch, hand, BLOCK
         carry_tiles(moved.a, moved.b, moved.pairs, *grid, shift, kept, memory, lists, field)
 
-    calls = rows * columns // POSES_OF_CALL
+    calls = max(rows * columns // POSES_OF_CARRY, CARRIES)
     run_tiles(work, _tiles(rows, columns), moved.pairs, progress, "exact clearance", threads, calls)
     return field
 

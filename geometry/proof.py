@@ -14,7 +14,7 @@ from geometry.planes import Plane, planes_of
 from geometry.progress import Progress, Silent
 from geometry.proof_kernel import Proved, Strip, prove_tiles
 from geometry.scene import Scene
-from geometry.tasks import Tiles, run_tiles
+from geometry.tasks import CALLS, Tiles, run_tiles
 
 Bounds = NDArray[np.float32]
 Indices = NDArray[np.int32]
@@ -200,7 +200,7 @@ def prove_plane(
     def work(hand: Tiles, memory: Memory, lists: Lists) -> None:
         evaluated.put(prove_tiles(plane.a, plane.b, plane.pairs, strip_a, strip_b, hand, first, memory, lists, proved))
 
-    run_tiles(work, tiles, plane.pairs, progress, "proof", threads, rows * columns // CELLS_OF_CALL)
+    run_tiles(work, tiles, plane.pairs, progress, "proof", threads, max(rows * columns // CELLS_OF_CALL, CALLS))
     return proved, sum(evaluated.get() for _ in range(evaluated.qsize()))
 
 

@@ -13,7 +13,7 @@ from geometry.planes import Plane, planes_of
 from geometry.progress import Progress, Silent
 from geometry.scene import Scene
 from geometry.sweep_kernel import Angles, Field, sweep_tiles
-from geometry.tasks import Tiles, run_tiles
+from geometry.tasks import CALLS, Tiles, run_tiles
 
 Array = NDArray[np.float64]
 Indices = NDArray[np.int32]
@@ -103,7 +103,8 @@ def sweep_plane(
     def work(hand: Tiles, memory: Memory, lists: Lists) -> None:
         sweep_tiles(plane.a, plane.b, plane.pairs, gantry, couch, hand, block, memory, lists, field)
 
-    run_tiles(work, tiles, plane.pairs, progress, "exact clearance", threads, rows * columns // POSES_OF_CALL)
+    calls = max(rows * columns // POSES_OF_CALL, CALLS)
+    run_tiles(work, tiles, plane.pairs, progress, "exact clearance", threads, calls)
     return field
 
 

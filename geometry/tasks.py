@@ -14,7 +14,8 @@ from geometry.progress import Progress, stop_if_cancelled
 
 Tiles = NDArray[np.int64]
 
-# Calls into compiled code of one run, at least: each costs about 0.3 ms to unpack its arguments.
+# Calls into compiled code of one run, as a rule: each costs about 0.3 ms to unpack its arguments, and has to wait for
+# its turn with the interpreter where another thread, such as a window's, keeps that busy.
 CALLS = 24
 
 
@@ -27,13 +28,13 @@ def run_tiles(
     threads: int | None = None,
     calls: int = CALLS,
 ) -> None:
-    """Run `work` on all tiles, shape (n, 4), in threads, in that many calls or more. Raises Cancelled.
+    """Run `work` on all tiles, shape (n, 4), in threads, in that many calls. Raises Cancelled.
 
     Cancel waits for a call in each thread: what takes longer wants more of them.
     """
     workers = min(threads or os.cpu_count() or 1, len(tiles))
     # Rows dealt out like cards: neighbours share the hard places. Contiguous: numba compiles for each layout anew.
-    count = min(max(calls, CALLS), len(tiles))
+    count = min(calls, len(tiles))
     hands = [np.ascontiguousarray(tiles[k::count]) for k in range(count)]
     scratch: queue.SimpleQueue[tuple[Memory, Lists]] = queue.SimpleQueue()
     for _ in range(workers):

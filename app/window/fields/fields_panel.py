@@ -31,6 +31,7 @@ _EMPTY = (
     "Open a treatment plan (RT Plan or RT Ion Plan) or a list of fields (.csv), or drop it onto the window: every "
     "field and every move between fields is held against this set-up."
 )
+_MEASURED_LESS = "A gap was measured smaller than it should be"
 _STALE = "The set-up has changed: these verdicts are those of before."
 _TABLES = (
     ("Table of plan and of set-up, each", "both"),
@@ -188,6 +189,12 @@ class FieldsPanel(QWidget):
     def show_gaps(self, places: Sequence[GapPlace], rows: Sequence[GapRow]) -> None:
         """Show where to measure and what was measured, of all fields."""
         self._places, self._gaps = tuple(places), tuple(rows)
+        flagged = list(dict.fromkeys(row.gap.field for row in rows if row.is_flagged))
+        # Verdicts are of the model; where somebody measured less than it says, that comes first.
+        if flagged:
+            self.tell(f"{_MEASURED_LESS}: {', '.join(flagged)}. Find out why before anything is treated.")
+        elif self.message.text().startswith(_MEASURED_LESS):
+            self.tell("")
         self._show_detail()
 
     def set_stale(self, stale: bool) -> None:

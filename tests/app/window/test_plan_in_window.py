@@ -84,6 +84,7 @@ def test_a_gap_that_was_typed_is_kept_with_the_set_up_and_stands_on_the_sheet(
     kept = tmp_path / "mine.gaps.csv"
     wait_for(kept.exists, "the gaps")
     assert read_kept_gaps(setup)[0].measured_mm == 87.5
+    assert "measured smaller" in planned.workspace.fields.message.text()
 
     sheet = tmp_path / "sheet.pdf"
     monkeypatch.setattr(QFileDialog, "getSaveFileName", lambda *_: (str(sheet), "Dry-run sheet, Letter (*.pdf)"))
