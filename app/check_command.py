@@ -123,19 +123,24 @@ def _write(
 
 
 def _fits(said: list[str]) -> dict[str, tuple[str, ...]]:
-    found = {}
+    from app.files.wording import printable  # noqa: PLC0415
+
+    found: dict[str, tuple[str, ...]] = {}
     for text in said:
         field, sign, what = text.partition("=")
         if not sign or not field.strip():
-            raise BadInput([Fault("command line", "--fit", f"'{text[:60]}'", "FIELD=WHAT, as '2=cone'")])
-        found[field.strip()] = tuple(part.strip() for part in what.split(";") if part.strip())
+            raise BadInput([Fault("command line", "--fit", f"'{printable(text)}'", "FIELD=WHAT, as '2=cone'")])
+        words = tuple(part.strip() for part in what.split(";") if part.strip())
+        if found.setdefault(field.strip(), words) != words:
+            raise BadInput([Fault("command line", "--fit", f"'{printable(field.strip())}' twice", "each field once")])
     return found
 
 
 def _show(report: "CheckReport", provenance: "Provenance", written: list[Path]) -> None:
     from app.check_table import show_report  # noqa: PLC0415
+    from app.files.wording import escaped  # noqa: PLC0415
 
     show_report(report, provenance)
     for path in written:
-        sys.stdout.write(f"Wrote {path}\n")
+        sys.stdout.write(f"Wrote {escaped(str(path))}\n")
     sys.stdout.write(f"{CAUTIONS[0]}\n")

@@ -130,7 +130,8 @@ def _angles(place: Approach) -> str:
 
 def _how(move: MoveCheck) -> str:
     steps = "; ".join(step.text for step in move.steps)
-    return "; ".join(words for words in (steps, move.reason) if words)
+    table_as = f"figures for {move.table_as}" if move.table_as and move.steps else ""
+    return "; ".join(words for words in (steps, move.reason, table_as) if words)
 
 
 def _remarks(report: CheckReport) -> list[str]:

@@ -2,6 +2,7 @@
 
 import argparse
 import datetime
+import os
 import sys
 import time
 from collections.abc import Callable, Sequence
@@ -12,6 +13,7 @@ from app import __version__
 from app.cautions import CAUTIONS
 from app.check_command import add_check
 from app.command_options import add_proof_options, number_type
+from app.files.wording import escaped
 from app.terminal import TerminalProgress
 from geometry.errors import BadInput, Cancelled, Fault, GeometryError, WideberthError
 
@@ -32,17 +34,27 @@ def run(arguments: Sequence[str]) -> int:
     parser = _parser()
     chosen = parser.parse_args(arguments)
     try:
-        return int(chosen.command(chosen))
+        status = int(chosen.command(chosen))
+        print(end="", flush=True)
+    except OSError as error:
+        # Faults of files are BadInput by now, or name their file: this is what was printed.
+        if isinstance(error, BrokenPipeError) or error.filename is not None:
+            raise
+        # Python would try once more at the end, and end with a status of its own.
+        sys.stdout = open(os.devnull, "w", encoding="utf-8")  # noqa: PTH123, SIM115
+        print(f"wideberth: standard output: cannot be written ({error.strerror})", file=sys.stderr)
+        return BAD_INPUT
     except BadInput as error:
         for fault in error.faults:
-            print(f"wideberth: {fault}", file=sys.stderr)
+            print(f"wideberth: {escaped(str(fault))}", file=sys.stderr)
         return BAD_INPUT
     except Cancelled:
         print("wideberth: stopped; nothing was written", file=sys.stderr)
         return STOPPED
     except WideberthError as error:
-        print(f"wideberth: {error}", file=sys.stderr)
+        print(f"wideberth: {escaped(str(error))}", file=sys.stderr)
         return BAD_INPUT
+    return status
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -133,7 +145,7 @@ def _map(chosen: argparse.Namespace) -> int:
     if not chosen.quiet:
         _summary(assessment, seconds)
         for path in (*chosen.out, *([chosen.grid] if chosen.grid else [])):
-            print(f"Wrote {path}")
+            print(f"Wrote {escaped(str(path))}")
     return DONE
 
 
@@ -187,5 +199,5 @@ def _pose(chosen: argparse.Namespace) -> int:
     for reason in pose.scene.no_travel:
         print(f"no travel: {reason}")
     if chosen.out is not None:
-        print(f"Wrote {chosen.out}")
+        print(f"Wrote {escaped(str(chosen.out))}")
     return DONE

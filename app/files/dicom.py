@@ -8,7 +8,7 @@ RT Ion Plan).
 
 import struct
 import warnings
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
 from typing import TYPE_CHECKING, Final, TypeAlias
@@ -188,7 +188,11 @@ def items_of(dataset: "Dataset", keyword: str) -> list["Dataset"]:
 
 def text_of(dataset: "Dataset", keyword: str) -> str:
     """Return an element as text, empty where it is missing."""
-    return str(dataset.get(keyword) or "").strip()
+    value = dataset.get(keyword) or ""
+    # A backslash parts values: text of several ones is given back as the file has it.
+    return (
+        str(value) if isinstance(value, str) or not isinstance(value, Sequence) else "\\".join(map(str, value))
+    ).strip()
 
 
 def whole_number(dataset: "Dataset", keyword: str) -> int | None:

@@ -32,8 +32,19 @@ def described(value: object) -> str:
 
 def printable(text: str) -> str:
     """Return `text` shortened to 60 characters, what cannot be printed escaped."""
-    shown = text if len(text) <= _LONGEST_SHOWN else text[: _LONGEST_SHOWN - 1] + "…"
-    return "".join(c if c.isprintable() else f"\\u{ord(c):04x}" for c in shown)
+    return escaped(text if len(text) <= _LONGEST_SHOWN else text[: _LONGEST_SHOWN - 1] + "…")
+
+
+def escaped(text: str) -> str:
+    """Return `text`, what cannot be printed escaped: names of files may hold what a terminal would obey."""
+    return "".join(c if c.isprintable() else f"\\u{ord(c):04x}" for c in text)
+
+
+def decimal_number(text: str) -> float:
+    """Return a number that a person typed. ValueError, also for what only Python reads as one, such as '1_0'."""
+    if "_" in text:
+        raise ValueError(text)
+    return float(text)
 
 
 def one_of(options: Iterable[str]) -> str:
@@ -45,6 +56,8 @@ def one_of(options: Iterable[str]) -> str:
 def did_you_mean(word: str, options: Iterable[str]) -> str:
     """Return "did you mean 'x'? one of …", or only the list where nothing comes near."""
     known = list(options)
+    if not known:
+        return "nothing"
     by_folded = {option.casefold(): option for option in known}
     near = difflib.get_close_matches(word[:200].casefold(), list(by_folded), n=1, cutoff=0.55)
     hint = f"did you mean '{printable(by_folded[near[0]])}'? " if near else ""

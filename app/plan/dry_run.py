@@ -20,6 +20,7 @@ from geometry.treatment.data import CheckReport, FieldCheck, MoveCheck, MoveStep
 
 NOT_PERMITTED: Final = "NOT PERMITTED"
 DO_NOT_RUN: Final = "Do not run, unless your local rules say how this is done."
+NO_INSTRUCTION: Final = "in these figures, no instruction: plan and set-up differ, settle first which counts"
 # Lines of the set-up's inputs that nobody can check in the room.
 _NOT_IN_THE_ROOM: Final = ("Patient envelope", "Gantry travel", "Couch travel", "Greatest excess of a piece")
 _SAME_MM: Final = 0.05
@@ -32,7 +33,8 @@ class FieldRow:
     `kind`: "arc" or "static beam"; `state`: in words, see `state_words`; `turning`: the axes that turn during the
     field. `least`: the clearance to expect, in words: the proved bound of a permitted field, otherwise the exact
     clearance at `tightest`. `required`: of that pair. `parts`: the pair. `tightest`: the exact place to look at on the
-    field's own path, `look` says what it is; `stop`: where to enter the room and look before it, None where there is
+    field's own path, `look` says what it is; `first`: for contact and short the first place on the path that is short,
+    None where that is `tightest` itself; `stop`: where to enter the room and look before it, None where there is
     none (not permitted) or where it is `tightest` itself. `remarks`: what is particular to it, in words.
     """
 
@@ -51,6 +53,7 @@ class FieldRow:
     parts: tuple[str, str] | None
     look: str
     tightest: Place | None
+    first: Place | None
     stop: Place | None
     remarks: tuple[str, ...]
 
@@ -98,7 +101,7 @@ def dry_run(report: CheckReport) -> DryRun:
         permitted=report.permitted,
         checks=tuple(_checks(report.scene)),
         fields=tuple(_field(number, check, report.scene, scales) for number, check in enumerate(report.fields, 1)),
-        moves=tuple(_move(move, scales) for move in report.moves),
+        moves=tuple(_move(move, report, scales) for move in report.moves),
         remarks=tuple(_remarks(report)),
         scales=scales,
     )
@@ -154,6 +157,7 @@ def _field(number: int, check: FieldCheck, given: Scene, scales: OwnScales) -> F
         parts=parts,
         look=_look(check),
         tightest=tightest,
+        first=_first(check),
         stop=_stop(check, place) if permitted else None,
         remarks=tuple(_field_remarks(check, given)),
     )
@@ -176,9 +180,22 @@ def _look(check: FieldCheck) -> str:
     """Return what the place to look at is; a field that is in doubt fails nowhere in particular."""
     if check.state is State.PERMITTED:
         return "Tightest at"
-    if check.state is not State.UNPROVED:
-        return "Fails at"
+    if check.state is State.CONTACT:
+        return "Contact at" if _first(check) is None else "Contact (nearest approach) at"
+    if check.state is State.SHORT:
+        return "Short at" if _first(check) is None else "Shortest at"
     return "Nearest at" if check.verdict.reason else "Not proved at"
+
+
+def _first(check: FieldCheck) -> Place | None:
+    """Return where a field is first short, exact, unless that is the place to look at anyhow."""
+    first, place = check.verdict.first_short, check.place
+    if check.state not in (State.CONTACT, State.SHORT) or first is None:
+        return None
+    ends = None if place is None else (place.gantry_deg, place.couch_deg)
+    if ends is not None and is_same((first.gantry_deg, first.couch_deg), ends):
+        return None
+    return place_of(check.scene, first)
 
 
 def _stop(check: FieldCheck, place: Approach | None) -> Place | None:
@@ -190,16 +207,8 @@ def _stop(check: FieldCheck, place: Approach | None) -> Place | None:
 
 def _field_remarks(check: FieldCheck, given: Scene) -> list[str]:
     """Return what differs from the set-up's values on the sheet, and why a field is not permitted."""
-    setup, words = check.scene.setup, []
-    if check.verdict.reason:
-        words.append(check.verdict.reason)
-    if check.state is not State.CONTACT and not math.isnan(check.shortfall_mm):
-        words.append(f"{math.ceil(10.0 * check.shortfall_mm - 1e-6) / 10.0:.1f} mm short of what is required")
-    elif check.state is State.UNPROVED and not check.verdict.reason:
-        words.append("not proved within the readouts' tolerances")
-    table, held = check.scene.couch, given.couch
-    if max(abs(one - other) for one, other in zip(table.T_mm, held.T_mm, strict=True)) > _SAME_MM:
-        words.append("table at " + _values(check.scene, ("Couch lateral", "Couch longitudinal", "Couch vertical")))
+    words = [*_why_not(check), *_other_table(check, given)]
+    setup, table, held = check.scene.setup, check.scene.couch, given.couch
     if (table.pitch_deg, table.roll_deg, table.eccentric_deg) != (held.pitch_deg, held.roll_deg, held.eccentric_deg):
         words.append("tilt: " + _values(check.scene, ("Couch pitch", "Couch roll", "Couch eccentric")))
     if setup.fitted != given.setup.fitted:
@@ -215,6 +224,28 @@ def _field_remarks(check: FieldCheck, given: Scene) -> list[str]:
     return words
 
 
+def _why_not(check: FieldCheck) -> Iterator[str]:
+    """Yield why a field is not permitted, and by how much it is short."""
+    if check.verdict.reason:
+        yield check.verdict.reason
+    if check.state is not State.CONTACT and not math.isnan(check.shortfall_mm):
+        yield f"{math.ceil(10.0 * check.shortfall_mm - 1e-6) / 10.0:.1f} mm short of what is required"
+    elif check.state is State.UNPROVED and not check.verdict.reason:
+        yield "not proved within the readouts' tolerances"
+
+
+def _other_table(check: FieldCheck, given: Scene) -> Iterator[str]:
+    """Yield where the table is for a field, no instruction where plan and set-up differ."""
+    table, held = check.scene.couch, given.couch
+    if max(abs(one - other) for one, other in zip(table.T_mm, held.T_mm, strict=True)) > _SAME_MM:
+        where = "table at " + _values(check.scene, ("Couch lateral", "Couch longitudinal", "Couch vertical"))
+        yield where if check.table_settled else f"{where} {NO_INSTRUCTION}"
+    elif not check.table_settled:
+        yield f"table as on page 1 {NO_INSTRUCTION}"
+    if check.table_as:
+        yield f"figures for {check.table_as}"
+
+
 def _values(scene: Scene, labels: Sequence[str]) -> str:
     """Return some of a set-up's lines, in short."""
     return ", ".join(
@@ -224,8 +255,10 @@ def _values(scene: Scene, labels: Sequence[str]) -> str:
     )
 
 
-def _move(move: MoveCheck, scales: OwnScales) -> MoveRow:
+def _move(move: MoveCheck, report: CheckReport, scales: OwnScales) -> MoveRow:
+    settled = all(report.fields[k].table_settled for k in (move.before, move.after))
     permitted = move.state is State.PERMITTED
+    table_as = f"figures for {move.table_as}" if move.table_as and move.steps else ""
     found = [(step, *known) for step in move.steps if (known := _bound(step)) is not None]
     least_mm, parts, required_mm, tightest = math.nan, None, None, None
     if found:
@@ -240,11 +273,11 @@ def _move(move: MoveCheck, scales: OwnScales) -> MoveRow:
         after=move.after + 1,
         permitted=permitted,
         state=state_words(move.state),
-        steps=tuple(_steps(move, scales)) if permitted else (),
+        steps=tuple(_steps(move, scales, settled=settled)) if permitted else (),
         least=_bound_text(least_mm, is_bound=permitted),
         required=required_text(required_mm),
         parts=move.in_the_way or parts,
-        reason=move.reason,
+        reason="; ".join(words for words in (move.reason, table_as) if words),
         tightest=tightest,
         end=None if tightest is None else _end(move, tightest),
     )
@@ -268,10 +301,13 @@ def _bound(step: MoveStep) -> tuple[float, Approach | None] | None:
     return None if found is None else (found.least_clearance_mm, None)
 
 
-def _steps(move: MoveCheck, scales: OwnScales) -> Iterator[str]:
+def _steps(move: MoveCheck, scales: OwnScales, *, settled: bool) -> Iterator[str]:
+    """Yield what to do; a table's shift only where plan and set-up agree on it."""
     for step in move.steps:
         if step.kind == "turn":
             yield from leg_texts(step.points_deg, scales)
+        elif step.kind == "table" and not settled:
+            yield "table to its place for the next field, once it is settled whether plan or set-up counts"
         else:
             yield step.text.replace(" deg", "°")
 

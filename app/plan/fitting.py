@@ -4,7 +4,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from typing import Final
 
-from app.files.wording import did_you_mean, one_of, printable
+from app.files.wording import decimal_number, did_you_mean, one_of, printable
 from geometry.machine import Arm, Room
 from geometry.setup import Setup
 
@@ -40,12 +40,14 @@ def fitted_from(words: Iterable[str], room: Room) -> Fitted:
         if found is not None:
             accessories.append(found)
         elif is_arm:
-            arm = _named(name, [arm.name for arm in room.arms], "an arm of the room")
-            arms[arm] = _place(room.arm_named(arm), place)
+            arm = _named(name, [arm.name for arm in room.arms], "an arm", "arms")
+            stands = _place(room.arm_named(arm), place)
+            if arms.setdefault(arm, stands) != stands:
+                raise Unfit(f"'{printable(arm)}' at {_told(arms[arm])} and at {_told(stands)}", "one place for an arm")
         elif plain(word) == plain(NOTHING):
             bare = True
         else:
-            accessories.append(_named(word, [one.name for one in room.accessories], "an accessory of the room"))
+            accessories.append(_named(word, [one.name for one in room.accessories], "an accessory", "accessories"))
     if bare and accessories:
         raise Unfit(f"'{NOTHING}' and {one_of(accessories)}", "one of the two")
     _check_slots(accessories, room)
@@ -79,11 +81,16 @@ def plain(words: str) -> str:
     return "".join(letter for letter in words.casefold() if letter.isalnum())
 
 
-def _named(words: str, names: list[str], what: str) -> str:
+def _named(words: str, names: list[str], what: str, all_of_them: str) -> str:
     found = [name for name in names if plain(name) == plain(words)]
     if len(found) != 1:
-        raise Unfit(f"'{printable(words)}'", f"{what}: {did_you_mean(words, names)}")
+        known = f"{what} of the room: {did_you_mean(words, names)}" if names else f"none: the room has no {all_of_them}"
+        raise Unfit(f"'{printable(words)}'", known)
     return found[0]
+
+
+def _told(place: str | float) -> str:
+    return f"'{printable(place)}'" if isinstance(place, str) else f"{place:g} mm"
 
 
 def _place(arm: Arm, words: str) -> str | float:
@@ -94,9 +101,9 @@ def _place(arm: Arm, words: str) -> str | float:
     allowed = did_you_mean(words, names)
     if arm.travel_mm is not None:
         low, high = arm.travel_mm
-        allowed = f"a slide of {low:g} to {high:g} mm, or {allowed}"
+        allowed = f"a slide of {low:g} to {high:g} mm" + (f", or {allowed}" if names else "")
         try:
-            slide_mm = float(words)
+            slide_mm = decimal_number(words)
         except ValueError:
             raise Unfit(f"'{printable(arm.name)}={printable(words)}'", allowed) from None
         if low <= slide_mm <= high:

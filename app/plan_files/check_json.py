@@ -13,12 +13,13 @@
   `nearest`, `first_short`: places, or null, as `geometry.paths.Verdict` tells them (`least` and `tightest` are proved
   bounds, the others exact); `within`: of an unproved field, the least slack seen within the tolerances about
   `first_short` and `nearest`; `look_at`: the place to look at; `shortfall_mm` there or `within`, null for none;
-  `seconds`; `notes`.
+  `seconds`; `notes`; `table_as`: which place of table and devices these figures are for, empty where it was checked
+  with one alone, and `table_settled`: whether the table's place is the same in all of them.
 - A place: `control_point` from 1 (the one before it), `gantry_deg`, `couch_deg` in [0, 360), `gantry_travel_deg`,
   `couch_travel_deg` unwrapped, `clearance_mm`, `slack_mm`, `machine_part`, `couch_part` as `SIDE/PART`.
 - `moves`, in plan order, each: `before` and `after`, numbers of fields, `state`, `reason`, `in_the_way` (two parts, or
-  null), `seconds`, `steps`: `kind` ("turn", "collimator", "table", "fit"), `text`, `state`, `path_deg` unwrapped,
-  `least_clearance_mm` (proved), `first_short` (a place), `seconds`.
+  null), `seconds`, `table_as`, `steps`: `kind` ("turn", "collimator", "table", "fit"), `text`, `state`, `path_deg`
+  unwrapped, `least_clearance_mm` (proved), `first_short` (a place), `seconds`.
 - `better_order`: null, or `fields` (numbers), `moves`, `seconds_saved` (turns alone; null where a move of the plan's
   order is not permitted), `changes_saved`, `exact` (whether no order is quicker).
 """
@@ -120,6 +121,8 @@ def _field(number: int, check: FieldCheck) -> Json:
         "shortfall_mm": finite(check.shortfall_mm),
         "seconds": check.seconds,
         "notes": list(check.notes),
+        "table_as": check.table_as,
+        "table_settled": check.table_settled,
     }
 
 
@@ -131,6 +134,7 @@ def _move(move: MoveCheck) -> Json:
         "reason": move.reason,
         "in_the_way": None if move.in_the_way is None else list(move.in_the_way),
         "seconds": finite(move.seconds),
+        "table_as": move.table_as,
         "steps": [_step(step) for step in move.steps],
     }
 

@@ -20,7 +20,7 @@ from pathlib import Path
 from typing import Final
 
 from app.files.input_file import checked_file
-from app.files.wording import described, did_you_mean, one_of, printable
+from app.files.wording import decimal_number, described, did_you_mean, one_of, printable
 from app.plan_files.turns import snapped_deg
 from geometry.errors import BadInput, Fault
 from geometry.legs import Point
@@ -44,6 +44,9 @@ MOST_FITTED: Final = 100
 _MOST_FAULTS: Final = 20
 _MOST_DEG: Final = 720.0
 _SENSES: Final = {"cw": 1, "cc": -1, "none": 0, "": 0}
+# Other words for falling angles, and the signs that other programs put between cells.
+_ALSO_CC: Final = ("ccw", "acw", "anticlockwise", "anti-clockwise", "counterclockwise", "counter-clockwise")
+_OTHER_SIGNS: Final = {";": "semicolons", "\t": "tabs"}
 
 
 def read_field_rows(path: Path | str) -> tuple[PlanField, ...]:
@@ -90,6 +93,10 @@ def _table(path: Path | str) -> tuple[list[str], list[tuple[int, list[str]]]]:
     if not filled:
         raise BadInput([Fault(str(path), "", "no rows", f"a first row with {', '.join(COLUMNS)}")])
     number, header = filled[0]
+    for sign, words in _OTHER_SIGNS.items():
+        if len(header) == 1 and sign in header[0]:
+            allowed = "commas between values, and decimal points"
+            raise BadInput([Fault(str(path), f"row {number}", f"{words} between the names of the columns", allowed)])
     faults = [
         Fault(str(path), f"row {number}", f"the column {described(name)}", did_you_mean(name, COLUMNS))
         for name in dict.fromkeys(header)
@@ -145,7 +152,8 @@ class _Row:
         start, stop = self._angle("gantry_from_deg"), self._angle("gantry_to_deg")
         direction = self._cells.get("direction", "").casefold()
         if direction not in _SENSES:
-            self.fault("direction", described(self._cells["direction"]), one_of(("CW", "CC", "none")))
+            hint = "did you mean 'CC'? " if direction in _ALSO_CC else ""
+            self.fault("direction", described(self._cells["direction"]), f"{hint}{one_of(('CW', 'CC', 'none'))}")
             return 0.0, 0.0
         if start is None:
             if not self._cells.get("gantry_from_deg"):
@@ -181,7 +189,7 @@ class _Row:
         if not text:
             return None
         try:
-            value = float(text)
+            value = decimal_number(text)
         except ValueError:
             value = math.nan
         if not abs(value) <= _MOST_DEG:

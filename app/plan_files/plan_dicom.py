@@ -98,6 +98,7 @@ class _Beam:
         self._points = control_points
         self._doubts: list[str] = []
         self._fit_doubts: list[str] = []
+        self._arm_doubts: list[str] = []
 
     def field(self, positions: dict[int | None, str | None]) -> PlanField:
         """Return the beam as a field; `positions` are those of the plan's patient set-ups by number."""
@@ -107,23 +108,36 @@ class _Beam:
         lateral_mm, longitudinal_mm, vertical_mm = (self._held(keyword, LARGEST_MM, "mm") for keyword in _TABLE)
         eccentric_deg = self._held("TableTopEccentricAngle", _MOST_DEG, "deg")
         isocentre_mm = self._isocentre()
+        collimator_deg = self._collimator()
+        patient_position = self._position(positions)
         self._look_for_what_has_no_model()
+        self._count_the_control_points()
+        left_out = [
+            words
+            for words, stated in (
+                ("isocentre position", isocentre_mm),
+                ("patient position", patient_position),
+                ("collimator angle", collimator_deg),
+            )
+            if not stated
+        ]
         return PlanField(
             name=printable(text_of(self._beam, "BeamName")) or f"beam {self._place.rsplit(' ', 1)[-1]}",
             points_deg=tuple(zip(gantry, couch, strict=True)),
-            collimator_deg=self._collimator(),
+            collimator_deg=collimator_deg,
             pitch_deg=self._tilt("TableTopPitchAngle"),
             roll_deg=self._tilt("TableTopRollAngle"),
             eccentric_deg=None if eccentric_deg is None else snapped_deg(eccentric_deg),
             isocentre_mm=isocentre_mm,
             table_mm=(lateral_mm, longitudinal_mm, vertical_mm),
-            patient_position=self._position(positions),
+            patient_position=patient_position,
             applicator=self._applicator(),
             is_setup=text_of(self._beam, "TreatmentDeliveryType") == "SETUP",
             source_axis_distance_mm=self._source_axis_distance(),
             doubts=tuple(dict.fromkeys(self._doubts)),
             fit_doubts=tuple(self._fit_doubts),
-            notes=tuple(self._notes()),
+            arm_doubts=tuple(self._arm_doubts),
+            notes=(*self._notes(), *(f"no {words} in the plan: the set-up's is taken" for words in left_out)),
             place=self._place if number is None else f"{self._place}, beam number {number}",
         )
 
@@ -239,9 +253,19 @@ class _Beam:
             self._doubts.append(f"the gantry is pitched by {pitch_deg:g} deg, which no room describes")
         snout_mm = self._held("SnoutPosition", LARGEST_MM, "mm")
         if snout_mm is not None:
-            self._fit_doubts.append(f"the plan has the snout {snout_mm:g} mm from the isocentre: where is its arm?")
+            self._arm_doubts.append(f"the plan has the snout {snout_mm:g} mm from the isocentre")
         if text_of(self._beam, "PatientSupportType") == "CHAIR":
             self._doubts.append("the patient sits on a chair, which no room describes")
+
+    def _count_the_control_points(self) -> None:
+        """Doubt control points that are not those which the plan counts, or not in their order."""
+        stated, present = whole_number(self._beam, "NumberOfControlPoints"), len(self._points)
+        if stated is not None and stated != present:
+            self._doubts.append(f"the plan counts {stated} control points and has {present}")
+        indices = [whole_number(item, "ControlPointIndex") for item in self._points]
+        wrong = next((k for k, index in enumerate(indices) if index is not None and index != k), None)
+        if wrong is not None:
+            self._doubts.append(f"control points out of order: number {wrong + 1} has the index {indices[wrong]}")
 
     def _notes(self) -> Iterator[str]:
         added = [words for keyword, words in _ADDED if whole_number(self._beam, keyword)]

@@ -103,11 +103,13 @@ def _field(axes: Axes, number: int, check: FieldCheck, taken: list[tuple[float, 
             arrowprops={"arrowstyle": "-|>", "color": INK, "linewidth": 2.2, "mutation_scale": 12, "shrinkB": 0.0},
             zorder=22,
         )
+    # Beyond the travel nothing is drawn: the number stands at the chart's edge.
+    start = _clamped(axes, points[0])
     axes.plot(*points[0], marker="o", markersize=5.0, color=INK, markeredgecolor="white", zorder=22)
     axes.annotate(
         str(number),
-        points[0],
-        xytext=(_beside(axes, points[0], taken), 0.0),
+        start,
+        xytext=(_beside(axes, start, taken), 0.0),
         textcoords="offset points",
         ha="center",
         va="center",
@@ -118,6 +120,15 @@ def _field(axes: Axes, number: int, check: FieldCheck, taken: list[tuple[float, 
         annotation_clip=False,
         zorder=23,
     )
+
+
+def _clamped(axes: Axes, point: tuple[float, float]) -> tuple[float, float]:
+    """Return the place of the chart nearest to a point."""
+    x, y = (
+        min(max(value, min(limits)), max(limits))
+        for value, limits in zip(point, (axes.get_xlim(), axes.get_ylim()), strict=True)
+    )
+    return x, y
 
 
 def _beside(axes: Axes, point: tuple[float, float], taken: list[tuple[float, float]]) -> float:

@@ -103,6 +103,9 @@ class _Table:
     def _move_words(self, row: MoveRow) -> list[str]:
         if not row.permitted:
             return [f"{row.state}. Do not drive this move, unless your local rules say how.", row.reason]
+        return [*self._permitted_move(row), *([f"{row.reason[:1].upper()}{row.reason[1:]}"] if row.reason else [])]
+
+    def _permitted_move(self, row: MoveRow) -> list[str]:
         if not row.steps:
             return ["Nothing moves."]
         steps = "; then ".join(row.steps)
@@ -164,6 +167,9 @@ class _Table:
         heads: list[tuple[str, bool]] = []
         if not row.permitted:
             heads.append((DO_NOT_RUN, True))
+            if row.first is not None:
+                heads.append((self._place("Short from", row.first, row), True))
+                heads += [(words, False) for words in self._around(row.first)]
             if tightest is not None:
                 heads.append((self._place(row.look, tightest, row), False))
         elif row.stop is not None:
@@ -175,9 +181,13 @@ class _Table:
             heads.append((f"{where}: gap {clearance_text(tightest.clearance_mm)}", True))
         cells = [cell for words, bold in heads for cell in _fitted(words, across, BODY, bold=bold)]
         if tightest is not None:
-            for words in (_between(tightest.parts).removeprefix(", "), tightest.side):
-                cells += [cell for cell in _fitted(words, across, SMALL, bold=False) if cell[0]]
+            for words in self._around(tightest):
+                cells += _fitted(words, across, SMALL, bold=False)
         return cells
+
+    def _around(self, place: Place) -> list[str]:
+        """Return what is near at a place, and where to look for it."""
+        return [words for words in (_between(place.parts).removeprefix(", "), place.side) if words]
 
     def _place(self, words: str, place: Place, row: FieldRow) -> str:
         """Return where a place is, the axes that turn on both scales, and its gap."""

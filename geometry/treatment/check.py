@@ -55,41 +55,41 @@ def check_fields(
     options: Options,
     progress: Progress | None = None,
     notes: tuple[str, ...] = (),
+    held: CheckReport | None = None,
 ) -> CheckReport:
-    """Return what is known of the fields in their order. ValueError for none at all; GeometryError, Cancelled."""
+    """Return what is known of the fields in their order. ValueError for none at all; GeometryError, Cancelled.
+
+    `held`: a report on the same fields, whose whole turns of gantry and couch are kept, so that the two can be compared
+    field by field and move by move.
+    """
     if not planned:
         raise ValueError("no fields; allowed: 1 or more")
-    return _Check(setup, planned, options, progress or Silent()).report(notes)
-
-
-def worse_of(one: CheckReport, other: CheckReport) -> CheckReport:
-    """Return the worse of two reports on the same fields, field by field and move by move.
-
-    A better order must be one in both.
-    """
-    better = None
-    if one.better is not None and other.better is not None and one.better.fields == other.better.fields:
-        moves = tuple(_worse_move(a, b) for a, b in zip(one.better.moves, other.better.moves, strict=True))
-        better = replace(one.better, moves=moves)
-    return replace(
-        one,
-        fields=tuple(_worse_field(a, b) for a, b in zip(one.fields, other.fields, strict=True)),
-        moves=tuple(_worse_move(a, b) for a, b in zip(one.moves, other.moves, strict=True)),
-        better=better,
-        notes=tuple(dict.fromkeys((*one.notes, *other.notes))),
-    )
+    return _Check(setup, planned, options, progress or Silent(), held).report(notes)
 
 
 class _Check:
     """One check; fields and moves run in threads, since the kernels let go of the interpreter."""
 
-    def __init__(self, setup: Setup, planned: Sequence[Planned], options: Options, progress: Progress) -> None:
+    def __init__(
+        self,
+        setup: Setup,
+        planned: Sequence[Planned],
+        options: Options,
+        progress: Progress,
+        held: CheckReport | None = None,
+    ) -> None:
         self._setup = setup
         self._planned = planned
         self._progress = progress
         self._tolerances = tolerances_of(setup.room, options)
         self._speeds = speeds_of(setup.room)
         self._branches = [_branches(one.field, self._tolerances) for one in planned]
+        if held is not None:
+            chosen = [field.points_deg for field in held.fields]
+            self._branches = [
+                tuple(path for path in paths if path == points)
+                for paths, points in zip(self._branches, chosen, strict=True)
+            ]
         stops = [end for paths in self._branches for path in paths for end in (path[0], path[-1])]
         self._quiet = _Quiet(progress)
         self._stages = Stages(options, stops)
@@ -117,12 +117,12 @@ class _Check:
     def _field(self, k: int, path: Path | None) -> FieldCheck:
         one = self._planned[k]
         stage = self._stages.of(one.setup)
-        points = path or one.field.points_deg
+        points = path or _nearest_turns(one.field.points_deg, self._tolerances)
         seconds = seconds_of(points, self._speeds.gantry, self._speeds.couch, together=True)
         if one.blocked:
             verdict = Verdict(State.UNPROVED, reason=one.blocked)
             return FieldCheck(one.field, stage.scene, points, verdict, None, one.notes, seconds)
-        verdict = stage.verdict(path or _nearest_to_zero(one.field.points_deg), self._quiet)
+        verdict = stage.verdict(points, self._quiet)
         within = None
         if verdict.state is State.UNPROVED:
             places = [place for place in (verdict.first_short, verdict.nearest) if place is not None]
@@ -260,12 +260,13 @@ def _branches(field: PlanField, tolerances: Tolerances) -> tuple[Path, ...]:
     return branches_of(Field(field.name, field.points_deg), tolerances.gantry_travel_deg, tolerances.couch_travel_deg)
 
 
-def _nearest_to_zero(points: Path) -> Path:
-    """Return a path that fits no travel with the whole turns that bring its middle nearest to 0."""
+def _nearest_turns(points: Path, tolerances: Tolerances) -> Path:
+    """Return a path that fits no travel with the whole turns that bring its middle nearest to the travel's."""
     shifts = []
-    for axis in range(2):
+    for axis, travel in enumerate((tolerances.gantry_travel_deg, tolerances.couch_travel_deg)):
         angles = [point[axis] for point in points]
-        shifts.append(-360.0 * round(0.5 * (min(angles) + max(angles)) / 360.0))
+        away = 0.5 * (min(angles) + max(angles)) - 0.5 * (travel[0] + travel[1])
+        shifts.append(-360.0 * round(away / 360.0))
     return tuple((gantry + shifts[0], couch + shifts[1]) for gantry, couch in points)
 
 
@@ -310,19 +311,3 @@ def _told(better: BetterOrder, moves: Sequence[MoveCheck]) -> BetterOrder | None
     if changes < 0 or (changes == 0 and saved < _WORTH_TELLING_S):
         return None
     return replace(better, seconds_saved=saved, changes_saved=changes)
-
-
-def _worse_field(one: FieldCheck, other: FieldCheck) -> FieldCheck:
-    worse = min(one, other, key=lambda field: (CODE_OF[field.state], _room_mm(field)))
-    return replace(worse, notes=tuple(dict.fromkeys((*one.notes, *other.notes))))
-
-
-def _room_mm(field: FieldCheck) -> float:
-    """Return how much room a field has, to compare two of the same state; a bound where there is one."""
-    verdict = field.verdict
-    place = verdict.tightest or verdict.nearest
-    return -math.inf if place is None or math.isnan(place.slack_mm) else place.slack_mm
-
-
-def _worse_move(one: MoveCheck, other: MoveCheck) -> MoveCheck:
-    return min(one, other, key=lambda move: CODE_OF[move.state])

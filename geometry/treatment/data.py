@@ -30,8 +30,8 @@ class PlanField:
     `applicator`: what the plan says is fitted, in its own words, to be found among the room's accessories; empty for
     nothing. `fitted`: what a person says is fitted, accessories and `arm=position`, in place of that.
     `is_setup`: a set-up field (imaging), not a treatment. In words: `doubts`, why it cannot be proved as it stands;
-    `fit_doubts`, why not until somebody says what is fitted; `notes`, what else is worth knowing; `place`, where it
-    stands in its file.
+    `fit_doubts`, why not until somebody says what is fitted; `arm_doubts`, why not until somebody says where an arm
+    stands (both as statements); `notes`, what else is worth knowing; `place`, where it stands in its file.
     """
 
     name: str
@@ -49,6 +49,7 @@ class PlanField:
     source_axis_distance_mm: float | None = None
     doubts: tuple[str, ...] = ()
     fit_doubts: tuple[str, ...] = ()
+    arm_doubts: tuple[str, ...] = ()
     notes: tuple[str, ...] = ()
     place: str = ""
 
@@ -69,6 +70,8 @@ class FieldCheck:
     `within`: for a field that is unproved although its path has room enough: of the angles that were looked at, within
     the tolerances about `verdict.first_short` and `verdict.nearest`, those with the least slack, exact; else None.
     `notes`: what differs from the set-up, and what was assumed, in words.
+    `table_as`: where it was checked with several places of table or devices, which of them these figures are for, in
+    words; empty where there is one alone. `table_settled`: the table's place is the same in all of them.
     `seconds`: the least time at the room's speeds, both axes together, 0 for a static beam.
     """
 
@@ -79,6 +82,8 @@ class FieldCheck:
     within: Approach | None = None
     notes: tuple[str, ...] = ()
     seconds: float = 0.0
+    table_as: str = ""
+    table_settled: bool = True
 
     @property
     def state(self) -> State:
@@ -139,7 +144,7 @@ class MoveCheck:
     `steps` in the order in which they are done; none where a field cannot be reached at all. `state` is the worst of
     theirs, permitted only where all are. `reason` says why not, empty where permitted. `in_the_way`: the labels of
     the parts to blame, the machine's first. `seconds`: the machine's time, NaN where not permitted or not known
-    (work by hand and table moves without a speed take a time that nobody states).
+    (work by hand and table moves without a speed take a time that nobody states). `table_as`: as of a `FieldCheck`.
     """
 
     before: int
@@ -149,6 +154,13 @@ class MoveCheck:
     reason: str = ""
     in_the_way: tuple[str, str] | None = None
     seconds: float = math.nan
+    table_as: str = ""
+
+    @property
+    def least_clearance_mm(self) -> float:
+        """The least that is known of its steps' clearance, mm: proved bounds; infinite for none."""
+        found = [known.least_clearance_mm for step in self.steps for known in (step.verdict, step.table) if known]
+        return min((value for value in found if not math.isnan(value)), default=math.inf)
 
     @property
     def turns(self) -> tuple[tuple[Point, ...], ...]:

@@ -129,7 +129,7 @@ class Mover:
     def _change(self, before: Setup, after: Setup, at: Point) -> Steps:
         """Return what else changes at one pose: the table first, then what is fitted or tilted."""
         stop_if_cancelled(self._progress)
-        moved = replace(before, isocentre=after.isocentre, on_table=after.on_table)
+        moved = replace(before, isocentre=after.isocentre, on_table=after.on_table, devices=after.devices)
         steps = Steps()
         if table_of(before) != table_of(after):
             steps = self._table(before, moved, at)

@@ -113,8 +113,8 @@ def state_of(setup: Setup) -> tuple[Hashable, ...]:
 
 
 def table_of(setup: Setup) -> tuple[Hashable, ...]:
-    """Return what the table's place follows from, tilt apart."""
-    return setup.isocentre, setup.on_table
+    """Return what the places of table, patient and devices follow from, tilt apart."""
+    return setup.isocentre, setup.on_table, setup.devices
 
 
 def tilt_of(setup: Setup) -> tuple[float, float, float]:

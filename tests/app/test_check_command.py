@@ -71,6 +71,8 @@ FIELD = {
     "shortfall_mm": (float, type(None)),
     "seconds": float,
     "notes": list,
+    "table_as": str,
+    "table_settled": bool,
 }
 MOVE = {
     "before": int,
@@ -79,6 +81,7 @@ MOVE = {
     "reason": str,
     "in_the_way": (list, type(None)),
     "seconds": (float, type(None)),
+    "table_as": str,
     "steps": list,
 }
 STEP = {
@@ -338,3 +341,11 @@ def test_plans_of_ions_are_checked_too(make: Callable[[], Dataset], folder: Path
     status, report = report_of(folder, plan, capsys)
     assert status == PERMITTED
     assert report["fields"][0]["place"].startswith("Ion Beam Sequence item 1")
+
+
+def test_one_field_said_twice_is_refused(tmp_path: Path, capsys: Capture) -> None:
+    setup, fields = write_setup(tmp_path), tmp_path / "fields.csv"
+    fields.write_text(CLEAR, encoding="utf-8")
+    said = ["--fit", "1=cone", "--fit", "1=none"]
+    assert run(["check", str(setup), str(fields), "--quiet", *said]) == BAD_INPUT
+    assert "found '1' twice" in capsys.readouterr().err

@@ -220,3 +220,23 @@ def test_the_window_opens_without_a_command_and_on_a_set_up(
     monkeypatch.setattr("app.window.start.run_window", lambda wanted: opened.append(wanted) or DONE)
     assert run(arguments) == DONE
     assert opened == [path]
+
+
+@pytest.mark.skipif(not Path("/dev/full").exists(), reason="there is no device that is full")
+def test_output_that_cannot_be_written_is_bad_input(setup_path: Path) -> None:
+    command = [sys.executable, "-m", "app", "pose", str(setup_path), "--gantry", "0", "--couch", "0", "--json"]
+    with Path("/dev/full").open("w", encoding="utf-8") as full:
+        ended = subprocess.run(command, stdout=full, stderr=subprocess.PIPE, text=True, check=False, timeout=120)
+    assert ended.returncode == BAD_INPUT
+    assert "standard output" in ended.stderr
+    assert ended.stderr.count("\n") == 1
+
+
+def test_file_names_reach_a_terminal_without_what_it_would_obey(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    missing = tmp_path / "red\x1b[31m.setup.toml"
+    assert run(["pose", str(missing), "--gantry", "0", "--couch", "0"]) == BAD_INPUT
+    told = capsys.readouterr().err
+    assert "\x1b" not in told
+    assert "red\\u001b[31m.setup.toml" in told

@@ -51,6 +51,7 @@ def edited(beam: Dataset, name: str, *points: dict[str, object]) -> Dataset:
     found = copy.deepcopy(beam)
     found.BeamName = name
     found.ControlPointSequence = found.ControlPointSequence[: max(len(points), 1)]
+    found.NumberOfControlPoints = len(found.ControlPointSequence)
     for item, values in zip(found.ControlPointSequence, points, strict=False):
         for keyword, value in values.items():
             setattr(item, keyword, value)
@@ -79,7 +80,7 @@ def test_the_open_plan_as_it_is(tmp_path: Path) -> None:
     assert [field.field.name for field in report.fields] == ["3 RAO", "4 AP", "5 LAO", "6 LPO"]
     assert_agreement(report, found)
     assert not any("isocentre" in note for field in report.fields for note in field.notes)
-    # It states a lateral position alone, which is named and not taken.
+    # It states a lateral position alone, which is taken; the rest is the set-up's.
     assert all("not stated in full" in "; ".join(field.notes) for field in report.fields)
 
 

@@ -48,7 +48,7 @@ class Beam:
     pitch: float
     roll: float
     isocentre: tuple[float, float, float]
-    table: tuple[float, float, float] | None
+    table: tuple[float | None, float | None, float | None]
 
 
 @dataclass(frozen=True)
@@ -103,7 +103,6 @@ def _beam(beam: Dataset, points: list[Dataset]) -> Beam:
         return angle - 360.0 if angle > 180.0 else angle
 
     lateral, longitudinal, vertical = (None if value is None else float(value) for value in stages)
-    whole = lateral is not None and longitudinal is not None and vertical is not None
     return Beam(
         str(beam.BeamName),
         np.column_stack([gantry, couch]),
@@ -111,20 +110,20 @@ def _beam(beam: Dataset, points: list[Dataset]) -> Beam:
         tilt("TableTopPitchAngle"),
         tilt("TableTopRollAngle"),
         (x, y, z),
-        (lateral, longitudinal, vertical) if whole else None,
+        (lateral, longitudinal, vertical),
     )
 
 
 def opinions(
     setup: Path, plan: Path, *, tolerance_deg: float = 1.0, step_deg: float = STEP_DEG, by_plan: bool = True
 ) -> list[Opinion]:
-    """Return an opinion on each beam; `by_plan`: the table stands where the plan has it, if it says so in full."""
+    """Return an opinion on each beam; `by_plan`: the table stands where the plan has it, as far as it says so."""
     found = []
     for beam in beams_of(pydicom.dcmread(plan)):
         with tempfile.TemporaryDirectory(dir=setup.parent) as folder:
             text = _edited(setup.read_text(encoding="utf-8"), beam, Path(folder), setup)
             parts = _posed(Path(folder), text)
-            if beam.table is not None and by_plan:
+            if by_plan and any(value is not None for value in beam.table):
                 parts = _posed(Path(folder), _with_table(text, parts, beam.table))
         found.append(_opinion(beam, parts, tomllib.loads(text), setup, tolerance_deg, step_deg))
     return found
@@ -147,12 +146,12 @@ def _put(text: str, key: str, value: object) -> str:
     return text
 
 
-def _with_table(text: str, parts: dict[str, list[Array]], table: tuple[float, float, float]) -> str:
-    """Put the patient elsewhere on the table, so that the table's origin stands where the plan has it, untilted."""
+def _with_table(text: str, parts: dict[str, list[Array]], table: Sequence[float | None]) -> str:
+    """Put the patient elsewhere on the table, so that the table top stands where the plan has it, without a roll."""
     top = np.concatenate(parts["couch/table top"])
     low, high = top.min(axis=0), top.max(axis=0)
     stands = np.array([0.5 * (low[0] + high[0]), high[1], high[2]])
-    off = np.array(table) - stands
+    off = [0.0 if value is None else value - held for value, held in zip(table, stands, strict=True)]
     values = {key: float(re.search(rf"^{key} = (.*)$", text, re.MULTILINE)[1]) for key in _ON_TABLE}
     text = _put(text, "lateral_mm", values["lateral_mm"] - off[0])
     # The table goes to the gantry under the patient: the patient's nearest point comes further from its head end.

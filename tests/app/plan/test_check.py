@@ -3,6 +3,8 @@
 Outside source: pydicom's own rtplan.dcm and rtstruct.dcm, as they are and with edited beams.
 """
 
+import datetime
+import json
 import re
 from collections.abc import Callable, Sequence
 from pathlib import Path
@@ -12,8 +14,11 @@ import pytest
 from pydicom import Dataset
 
 from app.check_command import read_fields
+from app.files.provenance import provenance_of
 from app.files.setup_file import read_setup
 from app.plan.check import Choices, check_plan
+from app.plan.dry_run import dry_run
+from app.plan_files.check_json import check_json
 from geometry.assess import Options
 from geometry.errors import BadInput
 from geometry.states import State
@@ -129,10 +134,76 @@ def test_table_positions_that_differ_are_named_and_checked_both_ways(check: Chec
     assert both.fields[0].verdict.nearest.clearance_mm == min(nearest) < max(nearest)
 
 
-def test_table_positions_in_part_are_named_only(check: Check) -> None:
-    report = check(static("a", 0.0, TableTopLateralPosition=25.0))
-    assert "lateral +25.0 mm; not stated in full" in notes_of(report)
-    assert report.fields[0].scene.couch.T_mm[0] == pytest.approx(0.0)
+def test_table_positions_in_part_are_checked_with_the_set_ups_for_the_rest(check: Check) -> None:
+    beams = [
+        arc("part", 90.0, 135.0, TableTopLateralPosition=-330.0),
+        table_arc(TableTopLateralPosition=-330.0, TableTopLongitudinalPosition=40.0, TableTopVerticalPosition=-170.0),
+    ]
+    held = check(arc("none", 90.0, 135.0)).fields[0].scene.couch.T_mm
+    beams[1].ControlPointSequence[0].TableTopLongitudinalPosition = round(float(held[1]), 2)
+    beams[1].ControlPointSequence[0].TableTopVerticalPosition = round(float(held[2]), 2)
+    report = check(*beams)
+    part, full = report.fields
+    assert "lateral -330.0 mm; not stated in full" in notes_of(report)
+    plan = check(*beams, choices=Choices(table="plan")).fields[0]
+    assert plan.scene.couch.T_mm == pytest.approx([-330.0, held[1], held[2]], abs=0.01)
+    assert part.state is full.state
+    assert part.verdict.nearest is not None
+    assert full.verdict.nearest is not None
+    assert part.verdict.nearest.clearance_mm == pytest.approx(full.verdict.nearest.clearance_mm, abs=0.2)
+
+
+DEVICE = '\n[[device]]\nname = "rest"\nshape = "box"\nsize_mm = [60, 60, 250]\ncentre_mm = [-270, -300, 125]\n'
+
+
+def test_devices_stay_or_move_along_with_a_patient_who_lies_elsewhere(check: Check) -> None:
+    held = check(static("a", 180.0)).fields[0].scene.couch.T_mm
+    moved = {"TableTopLateralPosition": float(held[0]) - 200.0}
+    report = check(static("a", 180.0, **moved), setup=SETUP + DEVICE, choices=Choices(table="plan"))
+    assert "moved along with the patient, the worse is told" in notes_of(report)
+    (field,) = report.fields
+    assert field.table_settled
+    assert field.table_as
+    assert f"its figures are for {field.table_as}" in field.notes
+    # With the set-up's table alone nothing is in doubt.
+    plain = check(static("a", 180.0, **moved), setup=SETUP + DEVICE, choices=Choices(table="setup"))
+    assert plain.fields[0].table_as == ""
+    assert "moved along" not in notes_of(plain)
+
+
+def test_a_device_that_would_move_along_towards_the_machine_is_the_worse(check: Check) -> None:
+    # The table goes 300 mm to the right under a patient who stays in the room, and so does a device that moves along.
+    device = DEVICE.replace("-270", "240").replace("-300", "-150")
+    moved = {"TableTopLateralPosition": -300.0}
+    found = {
+        table: check(static("a", 90.0, **moved), setup=SETUP + device, choices=Choices(table=table)).fields[0]
+        for table in ("setup", "plan", "both")
+    }
+    places = {table: field.verdict.nearest for table, field in found.items()}
+    assert places["setup"] is not None
+    assert places["plan"] is not None
+    assert found["setup"].labels(places["setup"]) == ("gantry/block", "couch/rest")
+    assert found["plan"].labels(places["plan"]) == ("gantry/block", "couch/rest")
+    # On the isocentre's side of the block, at x = 410 mm, the device ends at 240 + 30 mm.
+    assert places["plan"].clearance_mm == pytest.approx(140.0, abs=0.2)
+    assert "moved along" in found["plan"].table_as
+
+
+def test_rows_say_which_table_their_figures_are_for(check: Check) -> None:
+    differs = table_arc(TableTopLateralPosition=-330.0)
+    report = check(static("none", 0.0), differs)
+    none, both = report.fields
+    assert (none.table_as, none.table_settled) == ("", True)
+    assert both.table_as in ("the table where the plan has it", "the table where the set-up has it")
+    assert not both.table_settled
+    assert report.moves[0].table_as
+    values = json.loads(check_json(report, provenance_of(report.scene, Options(), datetime.date(2026, 3, 4))))
+    assert [field["table_settled"] for field in values["fields"]] == [True, False]
+    assert values["fields"][1]["table_as"] == both.table_as
+    assert values["moves"][0]["table_as"] == report.moves[0].table_as
+    rows = dry_run(report)
+    assert any("no instruction" in remark for remark in rows.fields[1].remarks)
+    assert not any("mm" in step for step in rows.moves[0].steps if step.startswith("table"))
 
 
 def test_table_positions_beyond_the_travel_are_no_travel(check: Check) -> None:
@@ -242,7 +313,41 @@ def test_what_the_set_up_has_fitted_and_the_plan_does_not_name_is_told(check: Ch
 def test_ions_with_a_snout_are_permitted_once_its_arm_is_told(check: Check) -> None:
     ions = static("ions", 0.0, SnoutPosition=200.0)
     assert "snout" in reason_of(check(ions, ions=True))
-    assert check(ions, ions=True, choices=Choices(fits={"all": ("kV source=extended",)})).permitted
+    for words in (("none",), (), ("cone",)):
+        assert "snout" in reason_of(check(ions, ions=True, choices=Choices(fits={"1": words})))
+    told = check(ions, ions=True, choices=Choices(fits={"all": ("kV source=extended",)}))
+    assert told.permitted
+    assert "the plan has the snout 200 mm from the isocentre; 'kV source' at 'extended' was said" in notes_of(told)
+
+
+def test_what_is_said_against_the_plans_own_words_is_told(check: Check) -> None:
+    said = check(with_applicator("electron applicator 15"), choices=Choices(fits={"1": ("cone",)}))
+    assert "the plan names the applicator 'electron applicator 15'; 'cone' was said to be fitted" in notes_of(said)
+    same = check(with_applicator("cone"), choices=Choices(fits={"1": ("cone",)}))
+    assert "was said" not in notes_of(same)
+
+
+def test_an_arm_that_is_said_leaves_the_plans_applicator_fitted(check: Check) -> None:
+    report = check(with_applicator("cone"), choices=Choices(fits={"1": ("kV source=extended",)}))
+    assert report.fields[0].scene.setup.fitted == ("cone",)
+    doubted = check(with_applicator("A15"), choices=Choices(fits={"1": ("kV source=extended",)}))
+    assert "'A15'" in reason_of(doubted)
+
+
+@pytest.mark.parametrize(
+    ("names", "fits", "words"),
+    [
+        (("a", "1"), {"1": ("cone",)}, "'1', which is the name of one field"),
+        (("a", "all"), {"all": ("cone",)}, "'all', which is the name of one field"),
+        (("a", "b"), {"1": ("cone",), "a": ("none",)}, "'1' and 'a', which are one field"),
+    ],
+)
+def test_a_name_that_may_mean_two_fields_is_refused(
+    names: tuple[str, str], fits: dict[str, tuple[str, ...]], words: str, check: Check
+) -> None:
+    with pytest.raises(BadInput) as caught:
+        check(*(static(name, 0.0) for name in names), choices=Choices(fits=fits))
+    assert words in str(caught.value)
 
 
 def test_set_up_fields_are_marked(check: Check) -> None:

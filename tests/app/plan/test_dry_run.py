@@ -156,3 +156,21 @@ def test_checks_are_the_set_ups_own_values_without_axes_that_cannot_move() -> No
     assert "Patient position" in names
     assert "Couch vertical" in names
     assert "Couch pitch" not in names
+
+
+def test_a_field_that_fails_says_where_it_is_first_short_before_where_it_is_worst() -> None:
+    checked = 0
+    for row, field in pairs(small_report()):
+        if field["state"] not in ("contact", "short"):
+            assert row.first is None
+            continue
+        first = field["first_short"]
+        assert row.first is not None
+        assert row.first.couch_deg == pytest.approx(first["couch_travel_deg"], abs=1e-8)
+        assert row.first.clearance_mm == first["clearance_mm"]
+        assert row.first.parts == (first["machine_part"], first["couch_part"])
+        assert row.tightest is not None
+        assert (row.first.couch_deg, row.first.gantry_deg) != (row.tightest.couch_deg, row.tightest.gantry_deg)
+        assert row.look == "Contact (nearest approach) at"
+        checked += 1
+    assert checked == 1

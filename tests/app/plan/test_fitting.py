@@ -59,6 +59,9 @@ def test_what_is_not_one_accessory_is_none(room: Room) -> None:
         (["kV panel=extended"], "kV panel"),
         (["snout=401"], "snout=401"),
         (["snout=nan"], "snout=nan"),
+        (["snout=1_0"], "snout=1_0"),
+        (["snout=10", "snout=20"], "'snout' at 10 mm and at 20 mm"),
+        (["kV source=parked", "KV source=extended"], "'kV source' at 'parked' and at 'extended'"),
         (["cone", "electron applicator 15"], "slot 'tray'"),
         (["none", "cone"], "none"),
     ],
@@ -84,3 +87,15 @@ def test_an_accessory_takes_the_place_of_the_one_in_its_slot(setup: Setup) -> No
     given = replace(setup, fitted=("cone", "chair rail"))
     assert with_accessory(given, "electron applicator 15").fitted == ("electron applicator 15", "chair rail")
     assert with_accessory(given, "Tray-1").fitted == ("cone", "chair rail", "Tray-1")
+
+
+def test_the_same_place_twice_is_one(room: Room) -> None:
+    assert fitted_from(["snout=10", "snout=10.0"], room).arms == (("snout", 10.0),)
+
+
+def test_a_room_without_any_says_so(room: Room) -> None:
+    bare = replace(room, accessories=(), arms=())
+    for words, allowed in (("cone", "none: the room has no accessories"), ("arm=out", "none: the room has no arms")):
+        with pytest.raises(Unfit) as caught:
+            fitted_from([words], bare)
+        assert caught.value.allowed == allowed

@@ -82,7 +82,10 @@ def test_columns_may_be_left_out_and_come_in_any_order(tmp_path: Path) -> None:
         ("\n\n", ("no rows",)),
         (b"\xff\xfe\x00a", ("no text", "UTF-8")),
         (HEADER + 'a,"0\n', ("comma-separated",)),
-        ("field;gantry_from_deg\na;0\n", ("'field;gantry_from_deg'",)),
+        ("field;gantry_from_deg\na;0\n", ("row 1", "semicolons", "commas")),
+        ("field\tgantry_from_deg\na\t0\n", ("tabs", "commas")),
+        (HEADER + "a,1_0,,,,,,\n", ("row 2, gantry_from_deg", "'1_0'")),
+        (HEADER + "a,0,90,CCW,,,,\n", ("row 2, direction", "did you mean 'CC'?")),
     ],
 )
 def test_faults_are_told_with_row_and_column(content: str | bytes, words: tuple[str, ...], tmp_path: Path) -> None:

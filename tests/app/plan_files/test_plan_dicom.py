@@ -121,7 +121,7 @@ def test_everything_that_a_field_can_state(read: Callable[..., tuple[PlanField, 
 def test_an_ion_plan_is_read_and_its_snout_asked_about(read: Callable[..., tuple[PlanField, ...]]) -> None:
     (field,) = read(arc("ions", 80.0, 100.0, "CW", SnoutPosition=250.0), ions=True)
     assert field.points_deg == ((80.0, 0.0), (100.0, 0.0))
-    assert any("snout" in doubt and "250" in doubt for doubt in field.fit_doubts)
+    assert any("snout" in doubt and "250" in doubt for doubt in field.arm_doubts)
     assert field.place.startswith("Ion Beam Sequence item 1")
 
 
@@ -241,3 +241,45 @@ def test_damaged_files_end_in_a_fault_or_in_fields(tmp_path: Path) -> None:
     assert all(fault.found and fault.allowed for fault in faults)
     assert fields
     assert all(abs(angle) < 2000.0 for field in fields for pair in field.points_deg for angle in pair)
+
+
+@pytest.mark.parametrize(
+    ("stated", "indices", "words"),
+    [
+        (3, (0, 1), "counts 3 control points and has 2"),
+        (1, (0, 1), "counts 1 control points and has 2"),
+        (2, (1, 0), "number 1 has the index 1"),
+        (2, (0, 2), "number 2 has the index 2"),
+    ],
+)
+def test_control_points_that_are_not_those_that_are_counted_are_a_doubt(
+    stated: int, indices: tuple[int, int], words: str, read: Callable[..., tuple[PlanField, ...]]
+) -> None:
+    item = arc("arc", 80.0, 100.0)
+    item.NumberOfControlPoints = stated
+    for control_point, index in zip(item.ControlPointSequence, indices, strict=True):
+        control_point.ControlPointIndex = index
+    (field,) = read(item)
+    assert any(words in doubt for doubt in field.doubts)
+    item.NumberOfControlPoints = 2
+    for index, control_point in enumerate(item.ControlPointSequence):
+        control_point.ControlPointIndex = index
+    assert read(item)[0].doubts == ()
+
+
+def test_what_a_plan_leaves_out_is_named(tmp_path: Path, read: Callable[..., tuple[PlanField, ...]]) -> None:
+    item = static("bare", 0.0)
+    assert read(item)[0].notes == ()
+    del item.ControlPointSequence[0].IsocenterPosition
+    del item.ControlPointSequence[0].BeamLimitingDeviceAngle
+    path = write_plan(tmp_path / "bare.dcm", [item])
+    plan = pydicom.dcmread(path)
+    del plan.PatientSetupSequence[0].PatientPosition
+    plan.save_as(path)
+    told = "; ".join(read_plan_fields(path)[0].notes)
+    for words in ("isocentre position", "patient position", "collimator angle"):
+        assert f"no {words} in the plan: the set-up's is taken" in told
+
+
+def test_a_name_of_several_values_is_told_as_the_file_has_it(read: Callable[..., tuple[PlanField, ...]]) -> None:
+    assert read(static("left\\right", 0.0))[0].name == "left\\right"

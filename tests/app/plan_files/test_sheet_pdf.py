@@ -13,14 +13,16 @@ from pypdf import PdfReader
 
 from app.cautions import CAUTIONS
 from app.files.chart_style import drawing_style
+from app.files.readings import own_scales
 from app.plan.dry_run import dry_run
+from app.plan.dry_run_words import point_text
 from app.plan.gaps import MeasuredGap, compare_gaps
 from app.plan_files.check_json import check_values
 from app.plan_files.sheet_page import SMALL, Page, Paper
 from app.plan_files.sheet_pdf import sheet_pages, write_sheet
 from geometry.errors import BadInput
 from geometry.treatment.data import CheckReport
-from tests.app.files.assessments import one_couch_angle, plain, unsurveyed, without_travel
+from tests.app.files.assessments import ROOM, one_couch_angle, plain, unsurveyed, without_travel
 from tests.app.files.reports import provenance_for, report_on, report_with_scales, small_report
 
 
@@ -89,6 +91,16 @@ def test_what_is_not_permitted_cannot_be_overlooked(small_sheet: Path) -> None:
     assert whole.count("Do not run, unless your local rules") == 2
     assert whole.count("Do not drive this move") == 2
     assert "SET-UP FIELD" in whole
+
+
+def test_where_a_field_is_first_short_stands_before_where_it_meets(small_sheet: Path) -> None:
+    whole = " ".join(pdf_texts(small_sheet))
+    (row,) = [row for row in dry_run(small_report()).fields if row.first is not None]
+    assert row.first is not None
+    assert row.first.parts is not None
+    at = whole.index(f"Short from couch {point_text((0.0, row.first.couch_deg), own_scales(ROOM), ('couch',))[6:]}")
+    assert at < whole.index("Contact (nearest approach) at")
+    assert row.first.parts[0].partition("/")[2] in whole[at:]
 
 
 def test_measured_gaps_are_shown_beside_the_computed_ones(small_sheet: Path) -> None:

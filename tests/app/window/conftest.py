@@ -6,6 +6,7 @@ from pathlib import Path
 
 import pytest
 from PySide6.QtCore import QTimer
+from PySide6.QtWidgets import QDialog, QMessageBox
 from pytestqt.qtbot import QtBot
 
 from app.window.main_window import MainWindow
@@ -18,6 +19,17 @@ def own_folders(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     for variable in ("XDG_CONFIG_HOME", "XDG_DATA_HOME", "LOCALAPPDATA", "APPDATA", "HOME"):
         monkeypatch.setenv(variable, str(tmp_path / "user"))
     return tmp_path
+
+
+@pytest.fixture(autouse=True)
+def no_dialog_waits(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Fail a test that opens a dialog which nobody will answer; one that means to puts its own answer here."""
+
+    def unanswered(dialog: QDialog) -> int:
+        raise AssertionError(f"a dialog waits for an answer: {getattr(dialog, 'text', dialog.windowTitle)()}")
+
+    monkeypatch.setattr(QMessageBox, "exec", unanswered)
+    monkeypatch.setattr(QDialog, "exec", unanswered)
 
 
 @pytest.fixture

@@ -5,7 +5,7 @@ from pathlib import Path
 
 import pytest
 from PySide6.QtGui import QColor, QImage
-from PySide6.QtWidgets import QFileDialog
+from PySide6.QtWidgets import QFileDialog, QMessageBox
 from pytestqt.qtbot import QtBot
 
 from app.cautions import CAUTIONS
@@ -81,10 +81,15 @@ def test_a_picture_of_the_room_is_written(window: MainWindow, tmp_path: Path, mo
     assert picture.height() > 1150
 
 
-def test_a_folder_that_is_not_there_is_told(window: MainWindow, tmp_path: Path) -> None:
+def test_a_folder_that_is_not_there_is_told(
+    window: MainWindow, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    shown: list[str] = []
+    monkeypatch.setattr(QMessageBox, "exec", lambda box: shown.append(box.text()) or 0)
     window.files.open_sample(HEAD)
     settle(window)
     told: list[str] = []
     window.exports.failed.connect(told.append)
     window.exports.write_map_to(tmp_path / "nowhere" / "angles.csv")
     assert "no folder" in told[0]
+    assert shown == told

@@ -15,7 +15,7 @@ from geometry.progress import Silent
 from geometry.setup import Setup
 from geometry.solids import Box
 from geometry.states import State
-from geometry.treatment.check import Planned, check_fields, worse_of
+from geometry.treatment.check import Planned, check_fields
 from geometry.treatment.data import CheckReport, PlanField
 from tests.geometry.small_rooms import (
     CORNER_DEG,
@@ -299,14 +299,19 @@ def test_an_order_with_a_way_is_found_where_the_plans_own_has_none() -> None:
 # All of it
 
 
-def test_the_worse_of_two_reports_is_told_field_by_field() -> None:
-    setup, blocked = setup_with(), setup_with([post("post", 60.0, 500.0)])
-    fields = [field("one", (0.0, 0.0)), field("two", (60.0, 0.0))]
-    free, tight = check(setup, *fields), check(blocked, *fields)
-    for found in (worse_of(free, tight), worse_of(tight, free)):
-        assert states(found.fields) == [State.PERMITTED, State.CONTACT]
-        assert states(found.moves) == [State.CONTACT]
-        assert found.better is None
+def test_a_field_that_fits_no_travel_is_told_within_the_travel_of_the_axis_that_it_fits() -> None:
+    (found,) = check(setup_with(), field("gone", (250.0, 120.0))).fields
+    assert found.state is State.NO_TRAVEL
+    assert found.points_deg == ((-110.0, 120.0),)
+
+
+def test_devices_elsewhere_on_the_table_are_another_state_of_the_room() -> None:
+    device = Part("rest", Mount.COUCH, Box((60.0, 60.0, 60.0), (0.0, 450.0, 50.0)), kind="device")
+    setup = setup_with(devices=[device])
+    moved = replace(setup, devices=(replace(device, solid=Box((60.0, 60.0, 60.0), (0.0, 250.0, 50.0))),))
+    report = check(setup, Planned(field("one", (0.0, 0.0)), setup), Planned(field("two", (0.0, 0.0)), moved))
+    assert report.fields[0].scene is not report.fields[1].scene
+    assert [step.kind for step in report.moves[0].steps] == ["table"]
 
 
 def test_no_fields_are_an_error_and_a_wish_to_stop_is_obeyed() -> None:

@@ -112,7 +112,7 @@ def test_a_plan_is_opened_checked_and_shown(bench: Bench, plan: Path) -> None:
     assert len(ways.at(ways.count() - 1)[0][1][1]) == 36
     bench.panel.sheet.click()
     assert bench.sheets[0][0] is bench.fields.checked.report
-    assert bench.sheets[0][2] == "breast.csv"
+    assert bench.sheets[0][1] == (), "nobody has measured anything"
 
 
 def test_another_set_up_makes_the_verdicts_stale_and_then_new(bench: Bench, plan: Path) -> None:
