@@ -50,6 +50,7 @@ class Workspace(QWidget):
         self._needs_camera = True
         self._with_beam = True
         self._span: Span | None = None
+        self._spans_shown: tuple[Assessment, float, bool] | None = None
         self._stale = False
         self._refresh = QTimer(self)
         self._refresh.setSingleShot(True)
@@ -194,6 +195,7 @@ class Workspace(QWidget):
             widget.set_readouts(room.gantry.readout, room.couch.turntable.readout)
             widget.show_map(None, None)
             widget.show_region(None, stale=False)
+        self._spans_shown = None
         self.spans.show_spans(self._desk.couch_deg, None, stale=False)
         self.curve.show_spans(self._desk.couch_deg, (), stale=False)
         self.spans.set_travel(gantry)
@@ -246,6 +248,10 @@ class Workspace(QWidget):
     def _show_spans(self, assessment: Assessment, *, stale: bool) -> None:
         room = assessment.scene.setup.room
         couch_deg = self._desk.couch_deg
+        shown = assessment, couch_deg, stale
+        if shown == self._spans_shown:
+            return
+        self._spans_shown = shown
         spans: tuple[Span, ...] = ()
         if not assessment.scene.no_travel:
             tolerances = tolerances_of(room, assessment.options)

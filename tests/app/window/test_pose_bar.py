@@ -1,5 +1,7 @@
 """Angles as people type and read them, and the pose in words."""
 
+import math
+
 import pytest
 from PySide6.QtCore import Qt
 from PySide6.QtTest import QTest
@@ -7,7 +9,7 @@ from pytestqt.qtbot import QtBot
 
 from app.files.setup_file import read_setup
 from app.window.angle_box import AngleBox
-from app.window.pose_bar import PoseBar
+from app.window.pose_bar import PoseBar, Proof
 from app.window.theme import DARK
 from geometry.assess import exact_pose
 from geometry.scene import build_scene
@@ -79,10 +81,10 @@ def test_the_pose_is_told_in_words(qtbot: QtBot) -> None:
     scene = build_scene(read_setup(ROOMS / "c_arm_close" / "breast.setup.toml"))
     bar.show_room(scene.setup.room)
     pose = exact_pose(scene, 0.0, 0.0)
-    bar.show_pose(pose, proved=False)
+    bar.show_pose(pose, Proof.UNDER_WAY)
     assert bar.state.text() == "Proof under way"
-    bar.show_pose(pose, proved=True)
+    bar.show_pose(pose, Proof.DONE)
     assert bar.state.text() == "Permitted"
-    assert f"{pose.clearance_mm:.1f} mm between" in bar.detail.text()
-    bar.show_pose(exact_pose(scene, 120.0, 60.0), proved=False)
+    assert f"{math.floor(10.0 * pose.clearance_mm) / 10.0:.1f} mm between" in bar.detail.text()
+    bar.show_pose(exact_pose(scene, 120.0, 60.0), Proof.UNDER_WAY)
     assert bar.state.text() == "Contact"
