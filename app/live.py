@@ -16,13 +16,17 @@ from geometry.sweep import ClearanceMap
 # What a coarse map may cost while the user's hand moves, s, and the steps to choose from, deg.
 _COARSE_S: Final = (0.03, 0.11)
 _STEPS_DEG: Final = (1.0, 2.0, 3.0, 4.0, 6.0)
+# The step of maps that follow from one before while the hand moves.
+CARRIED_STEP_DEG: Final = 2.0
+_CARRIED: Final = Options(gantry_step_deg=CARRIED_STEP_DEG, couch_step_deg=CARRIED_STEP_DEG)
 
 
 @dataclass(frozen=True, eq=False)
 class Stage:
     """How far a set-up is looked through.
 
-    `map` is the finest so far; `assessment`, and `share` of the sphere with it, are there once all is proved.
+    `map` is the finest so far, `is_exact` that on the grid of the options; `is_carried` says that it followed from one
+    before. `assessment`, and `share` of the sphere with it, are there once all is proved.
     """
 
     setup: Setup
@@ -30,6 +34,7 @@ class Stage:
     scene: Scene
     map: ClearanceMap | None = None
     is_exact: bool = False
+    is_carried: bool = False
     assessment: Assessment | None = None
     share: Share | None = None
 
@@ -37,27 +42,40 @@ class Stage:
 class LiveMaps:
     """Maps that are quick enough to follow a hand, and what they need to know of those before.
 
-    A set-up that differs by shifts from one whose exact map is known gets its own exact map in a fraction of a sweep;
-    any other one a coarse map, whose step follows from how long the last ones took on this machine.
+    A set-up that differs by shifts from one whose maps are known gets its own ones in a fraction of a sweep: one of
+    `CARRIED_STEP_DEG` at once, the exact one at rest. Any other gets a coarse map, whose step follows from how long the
+    last ones took on this machine. All values are exact at their angles.
     """
 
     def __init__(self) -> None:
         self.step_deg = 2.0
-        self._anchor: Anchor | None = None
+        self._anchors: tuple[Anchor, Anchor] | None = None
         self._anchor_options: Options | None = None
 
     def first_stage(self, setup: Setup, options: Options) -> Stage:
-        """Return the scene with a map, exact or coarse, within the blink of an eye. GeometryError."""
+        """Return the scene with a map within the blink of an eye. GeometryError."""
         scene = build_scene(setup)
-        anchor = self._anchor if self._anchor_options == options else None
-        carried = carried_map(anchor, scene) if anchor is not None else None
+        carried = self._carried(0, scene, options)
         if carried is not None:
-            return Stage(setup, options, scene, carried, is_exact=True)
+            return Stage(setup, options, scene, carried, is_carried=True)
         start = time.monotonic()
         # Not to be cancelled: what follows a hand must show something, however fast the hand moves.
         coarse = exact_map(scene, Options(gantry_step_deg=self.step_deg, couch_step_deg=self.step_deg), Silent())
         self.learn(time.monotonic() - start)
         return Stage(setup, options, scene, coarse)
+
+    def exact_stage(self, first: Stage, progress: Progress) -> Stage:
+        """Return the stage with the map on the grid of its options. Raises Cancelled."""
+        stop_if_cancelled(progress)
+        found = self._carried(1, first.scene, first.options, progress)
+        exact = found if found is not None else exact_map(first.scene, first.options, progress)
+        return replace(first, map=exact, is_exact=True, is_carried=found is not None)
+
+    def _carried(
+        self, which: int, scene: Scene, options: Options, progress: Progress | None = None
+    ) -> ClearanceMap | None:
+        anchors = self._anchors if self._anchor_options == options else None
+        return carried_map(anchors[which], scene, progress) if anchors is not None else None
 
     def learn(self, seconds: float) -> None:
         """Take the next step up or down where a coarse map took too long, or hardly any time."""
@@ -74,21 +92,17 @@ class LiveMaps:
 
     def anchor_at(self, exact: ClearanceMap | None, scene: Scene, options: Options, progress: Progress) -> None:
         """Let the maps to come follow from that of a scene, which is made if it is not known. Raises Cancelled."""
-        anchor = anchor_of(exact_map(scene, options, progress) if exact is None else exact, progress)
-        self._anchor, self._anchor_options = anchor, options
+        coarse = exact_map(scene, _CARRIED, progress)
+        fine = exact_map(scene, options, progress) if exact is None else exact
+        self._anchors = anchor_of(coarse, progress), anchor_of(fine, progress)
+        self._anchor_options = options
 
 
-def exact_stage(first: Stage, options: Options, progress: Progress) -> Stage:
-    """Return the stage with the exact map. Raises Cancelled."""
-    stop_if_cancelled(progress)
-    return replace(first, map=exact_map(first.scene, options, progress), is_exact=True)
-
-
-def proved_stage(exact: Stage, options: Options, progress: Progress) -> Stage:
+def proved_stage(exact: Stage, progress: Progress) -> Stage:
     """Return the stage with everything proved. Raises Cancelled."""
     if exact.map is None:
         raise ValueError("the exact map comes before the proof")
-    assessment = assess_map(exact.map, options, progress)
+    assessment = assess_map(exact.map, exact.options, progress)
     # Computed here, on the worker's time; the chart asks for it at once.
     _ = assessment.permitted_region
     return replace(exact, assessment=assessment, share=share_of(assessment))

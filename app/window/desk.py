@@ -52,6 +52,7 @@ class Desk(QObject):
         self.session: Session | None = None
         self.stage: Stage | None = None
         self.pose: Pose | None = None
+        self._pose_is_proved = False
         self._instead: Scene | None = None
         self.kept: Kept | None = None
         self.gantry_deg = 0.0
@@ -183,8 +184,9 @@ class Desk(QObject):
         if self._followed != followed:
             self._followed = followed
             self.follower.follow(*followed)
-            # What was said of the pose was said of the set-up before.
-            self._pose_timer.start()
+            # What was said of the pose was said of the set-up before; said once, not at every step of a drag.
+            if self._pose_is_proved:
+                self._pose_timer.start()
 
     def _on_stage(self, stage: Stage) -> None:
         self.stage = stage
@@ -199,6 +201,7 @@ class Desk(QObject):
             return
         pose = self._known_pose() or exact_pose(scene, self.gantry_deg, self.couch_deg)
         assessment = self.assessment if self.is_own_scene else None
+        self._pose_is_proved = assessment is not None
         self.pose = pose if assessment is None else proved_pose(assessment, pose)
         self.posed.emit(self.pose)
 

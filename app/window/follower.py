@@ -7,7 +7,7 @@ from functools import partial
 from PySide6.QtCore import QObject, Signal
 
 from app.jobs import Job, Jobs, Publish
-from app.live import LiveMaps, Stage, exact_stage, proved_stage
+from app.live import LiveMaps, Stage, proved_stage
 from geometry.assess import Options
 from geometry.carried import prepare_carry_kernel
 from geometry.prepare import prepare_kernels
@@ -74,7 +74,7 @@ class Follower(QObject):
         self._before_first = False
         before, self._scene = self._scene, stage.scene
         at_rest = stage.assessment is not None
-        if at_rest or (not stage.is_exact and self._maps.wants_anchor(before, stage.scene)):
+        if at_rest or (not stage.is_exact and not stage.is_carried and self._maps.wants_anchor(before, stage.scene)):
             self._anchor(stage)
         self.staged.emit(stage)
         self._start()
@@ -122,8 +122,6 @@ def _stages(
     publish(first)
     if newer.is_set():
         return
-    exact = first
-    if not first.is_exact:
-        exact = exact_stage(first, options, progress)
-        publish(exact)
-    publish(proved_stage(exact, options, progress))
+    exact = maps.exact_stage(first, progress)
+    publish(exact)
+    publish(proved_stage(exact, progress))

@@ -115,7 +115,7 @@ class Workspace(QWidget):
         desk.staged.connect(self._on_staged)
         desk.scene_shown.connect(self.show_scene)
         desk.turned.connect(lambda *_: self._show_angles())
-        desk.closed.connect(self._refresh.stop)
+        desk.closed.connect(self._on_closed)
         desk.posed.connect(self._on_posed)
         desk.kept_changed.connect(self._on_kept)
         desk.refused.connect(lambda text: self.setup_panel.set_messages((text,)))
@@ -206,6 +206,10 @@ class Workspace(QWidget):
         self._stale = False
         self._show_angles()
         self._show_document()
+
+    def _on_closed(self) -> None:
+        self._refresh.stop()
+        self.chart.show_map(None, None)
 
     def _on_changed(self) -> None:
         # A hand makes more edits than anybody can read.

@@ -23,7 +23,7 @@ from geometry.sweep import ClearanceMap
 __all__ = ["AngleChart", "ChartField", "Reading"]
 
 # Contours of larger maps take too long to follow a drag; they come when it rests for so many ms.
-_PROMPT_CELLS: Final = 20_000
+_PROMPT_CELLS: Final = 6_000
 _REST_MS: Final = 90
 _RING: Final = 6.0
 
@@ -57,8 +57,9 @@ class AngleChart(ChartCanvas):
         same = found is self._content.found
         contours = self._content.contours if same else NONE
         self._content = replace(self._content, found=found, codes=state, contours=contours)
-        if found is not None and not same:
+        if not same:
             self._rest.stop()
+        if found is not None and not same:
             if found.clearance_mm.size <= _PROMPT_CELLS:
                 self._find_contours()
             elif is_fine(found):

@@ -235,11 +235,11 @@ def test_contours_of_a_large_map_wait_for_rest(chart: AngleChart, qtbot: QtBot) 
     assert chart._content.contours.required
     found = flat_map(slope, 2.0)
     chart.show_map(found, None)
-    at_once = chart._content.contours
-    assert at_once.levels
+    qtbot.waitUntil(lambda: chart._content.contours.levels != ())
+    at_rest = chart._content.contours
     # Proved states change no clearance, so the lines stay.
     chart.show_map(found, all_in(State.PERMITTED, found))
-    assert chart._content.contours is at_once
+    assert chart._content.contours is at_rest
 
 
 def test_a_coarse_map_has_no_contours(chart: AngleChart) -> None:
