@@ -10,7 +10,7 @@ from rich.table import Table
 from rich.text import Text
 
 from app.files.provenance import Provenance
-from app.files.readings import reading_deg
+from app.files.readings import clearance_text, reading_deg
 from geometry.paths import Approach
 from geometry.states import State
 from geometry.treatment.data import CheckReport, FieldCheck, MoveCheck
@@ -95,7 +95,7 @@ def _clearance(check: FieldCheck) -> str:
     """Return the proved bound, rounded down, or the exact clearance at the place to look at."""
     if check.state is State.PERMITTED:
         least = check.verdict.least_clearance_mm
-        return f"{math.floor(10.0 * least + 1e-6) / 10.0:.1f}" if math.isfinite(least) else ""
+        return clearance_text(least).removesuffix(" mm") if math.isfinite(least) else ""
     place = check.place
     return f"{place.clearance_mm:.1f}" if place is not None and math.isfinite(place.clearance_mm) else ""
 

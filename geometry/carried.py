@@ -19,7 +19,7 @@ from geometry.planes import Plane, planes_of
 from geometry.progress import Progress, Silent
 from geometry.scene import Motion, Scene
 from geometry.scene_shifts import rigid_bodies, shifts_between
-from geometry.sweep import POSES_OF_CALL, ClearanceMap, angles_of, merge_plane, sweep_plane
+from geometry.sweep import POSES_OF_CALL, ClearanceMap, angles_of, empty_field, empty_map, merge_plane, sweep_plane
 from geometry.sweep_kernel import Angles, Field
 from geometry.tasks import CALLS, Tiles, run_tiles
 
@@ -100,7 +100,7 @@ def carried_map(
     if shifts is None or np.linalg.norm(shifts, axis=1).max(initial=0.0) > anchor.limit_mm:
         return None
     if anchor.turning is None:
-        result = _empty_map(scene, anchor.exact)
+        result = empty_map(scene, anchor.exact.gantry_deg, anchor.exact.couch_deg)
     else:
         result = _turning_map(anchor, anchor.turning, scene, shifts, progress, threads)
     for other in anchor.others:
@@ -197,7 +197,7 @@ def _carried(turning: Turning, moved: Plane, shift: Array, progress: Progress, t
     """Return the plane's field with b's pieces moved by `shift` (pieces, 3), mm; its points are in the fixed system."""
     gantry, couch, kept = turning.gantry, turning.couch, turning.kept
     rows, columns = len(couch.angle), len(gantry.angle)
-    field = _empty_field(rows, columns)
+    field = empty_field(rows, columns)
 
     def work(hand: Tiles, memory: Memory, lists: Lists) -> None:
         grid = gantry, couch, hand, BLOCK
@@ -210,31 +210,6 @@ def _carried(turning: Turning, moved: Plane, shift: Array, progress: Progress, t
 
 def _tiles(rows: int, columns: int) -> Tiles:
     return np.array([(0, columns, j, min(j + BLOCK[1], rows)) for j in range(0, rows, BLOCK[1])])
-
-
-def _empty_field(rows: int, columns: int) -> Field:
-    return Field(
-        np.full((rows, columns), np.nan),
-        np.full((rows, columns), np.nan),
-        np.full((rows, columns), -1, np.int32),
-        np.full((rows, columns, 3), np.nan),
-        np.full((rows, columns, 3), np.nan),
-    )
-
-
-def _empty_map(scene: Scene, like: ClearanceMap) -> ClearanceMap:
-    shape = like.clearance_mm.shape
-    return ClearanceMap(
-        scene,
-        like.gantry_deg,
-        like.couch_deg,
-        np.full(shape, np.inf),
-        np.full(shape, np.inf),
-        np.full(shape, -1, np.int32),
-        np.full(shape, -1, np.int32),
-        np.full((*shape, 3), np.nan),
-        np.full((*shape, 3), np.nan),
-    )
 
 
 def _known(exact: ClearanceMap, body_of_part: NDArray[np.int32]) -> Known:

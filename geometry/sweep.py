@@ -61,8 +61,19 @@ def sweep(
 ) -> ClearanceMap:
     """Return the clearance map of a scene on a grid; angles in degrees, rising. Raises Cancelled."""
     progress = progress or Silent()
+    result = empty_map(scene, gantry_deg, couch_deg)
+    for plane in planes_of(scene):
+        gantry = angles_of(gantry_deg if plane.with_gantry else np.zeros(1))
+        couch = angles_of(couch_deg if plane.with_couch else np.zeros(1))
+        field = sweep_plane(plane, gantry, couch, progress, threads)
+        merge_plane(result, plane, field)
+    return result
+
+
+def empty_map(scene: Scene, gantry_deg: Array, couch_deg: Array) -> ClearanceMap:
+    """Return the map of a scene before any plane is looked at: nothing is near anywhere."""
     shape = (len(couch_deg), len(gantry_deg))
-    result = ClearanceMap(
+    return ClearanceMap(
         scene,
         gantry_deg,
         couch_deg,
@@ -73,12 +84,17 @@ def sweep(
         np.full((*shape, 3), np.nan),
         np.full((*shape, 3), np.nan),
     )
-    for plane in planes_of(scene):
-        gantry = angles_of(gantry_deg if plane.with_gantry else np.zeros(1))
-        couch = angles_of(couch_deg if plane.with_couch else np.zeros(1))
-        field = sweep_plane(plane, gantry, couch, progress, threads)
-        merge_plane(result, plane, field)
-    return result
+
+
+def empty_field(rows: int, columns: int) -> Field:
+    """Return the field of a plane before it is filled: no distance is known."""
+    return Field(
+        np.full((rows, columns), np.nan),
+        np.full((rows, columns), np.nan),
+        np.full((rows, columns), -1, np.int32),
+        np.full((rows, columns, 3), np.nan),
+        np.full((rows, columns, 3), np.nan),
+    )
 
 
 def sweep_plane(
@@ -87,13 +103,7 @@ def sweep_plane(
     """Return the exact field of one plane; see `Field` for shapes. Raises Cancelled."""
     progress = progress or Silent()
     columns, rows = len(gantry.angle), len(couch.angle)
-    field = Field(
-        np.full((rows, columns), np.nan),
-        np.full((rows, columns), np.nan),
-        np.full((rows, columns), -1, np.int32),
-        np.full((rows, columns, 3), np.nan),
-        np.full((rows, columns, 3), np.nan),
-    )
+    field = empty_field(rows, columns)
     block = (
         1 if columns == 1 else POSES if rows == 1 else _block(gantry),
         1 if rows == 1 else POSES if columns == 1 else _block(couch),

@@ -50,6 +50,25 @@ def rounded_down(value_mm: float, digits: int) -> float | None:
     return math.floor(value_mm * scale + 1e-6) / scale
 
 
+def clearance_text(clearance_mm: float, digits: int = 1) -> str:
+    """Return a clearance in mm, rounded down so that paper never claims more; "unknown" where there is none."""
+    if clearance_mm == math.inf:
+        return "nothing near"
+    shown = rounded_down(clearance_mm, digits)
+    return "unknown" if shown is None else f"{shown:.{digits}f} mm"
+
+
+def rounded_up(value_mm: float, digits: int = 1) -> float:
+    """Return what must remain with fewer digits, not below it."""
+    scale = 10.0**digits
+    return math.ceil(value_mm * scale - 1e-6) / scale
+
+
+def required_text(required_mm: float | None, digits: int = 1) -> str:
+    """Return a required clearance in mm, rounded up so that paper never asks for less; empty for none."""
+    return "" if required_mm is None else f"{rounded_up(required_mm, digits):.{digits}f} mm"
+
+
 def finite(value: float) -> float | None:
     """Return the number, or None for one that is infinite or missing."""
     return value if math.isfinite(value) else None

@@ -9,10 +9,10 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Final
 
-from app.files.readings import OwnScales, own_scales, reading_deg
+from app.files.readings import OwnScales, clearance_text, own_scales, reading_deg, required_text
 from app.files.setup_lines import setup_lines
 from app.plan.dry_run_places import Place, is_same, place_at, place_of, stop_before
-from app.plan.dry_run_words import AXES, Turn, Which, clearance_text, leg_texts, required_text, turn_of
+from app.plan.dry_run_words import AXES, Turn, Which, leg_texts, turn_of
 from geometry.paths import Approach, Verdict
 from geometry.scene import Scene
 from geometry.states import State
@@ -229,7 +229,7 @@ def _why_not(check: FieldCheck) -> Iterator[str]:
     if check.verdict.reason:
         yield check.verdict.reason
     if check.state is not State.CONTACT and not math.isnan(check.shortfall_mm):
-        yield f"{math.ceil(10.0 * check.shortfall_mm - 1e-6) / 10.0:.1f} mm short of what is required"
+        yield f"{required_text(check.shortfall_mm)} short of what is required"
     elif check.state is State.UNPROVED and not check.verdict.reason:
         yield "not proved within the readouts' tolerances"
 

@@ -6,7 +6,7 @@ from dataclasses import dataclass
 from itertools import pairwise
 from typing import Final, Literal
 
-from app.files.readings import OwnScales, number_text, reading_deg, rounded_down, shown_deg
+from app.files.readings import OwnScales, number_text, reading_deg, shown_deg
 from geometry.legs import Point
 from geometry.machine import Readout
 
@@ -61,25 +61,6 @@ def point_text(at: Point, scales: OwnScales, axes: Sequence[Which] = AXES) -> st
 def leg_texts(points_deg: Sequence[Point], scales: OwnScales) -> tuple[str, ...]:
     """Return what to drive, one leg after the other, as "gantry to 181° CC (machine 359°)"."""
     return tuple(_leg(one, other, scales) for one, other in pairwise(points_deg))
-
-
-def clearance_text(clearance_mm: float, digits: int = 1) -> str:
-    """Return a clearance in mm, rounded down so that paper never claims more; "unknown" where there is none."""
-    if clearance_mm == math.inf:
-        return "nothing near"
-    shown = rounded_down(clearance_mm, digits)
-    return "unknown" if shown is None else f"{shown:.{digits}f} mm"
-
-
-def rounded_up(value_mm: float, digits: int = 1) -> float:
-    """Return what must remain with fewer digits, not below it."""
-    scale = 10.0**digits
-    return math.ceil(value_mm * scale - 1e-6) / scale
-
-
-def required_text(required_mm: float | None, digits: int = 1) -> str:
-    """Return a required clearance in mm, rounded up so that paper never asks for less; empty for none."""
-    return "" if required_mm is None else f"{rounded_up(required_mm, digits):.{digits}f} mm"
 
 
 def _corners(angles_deg: Sequence[float]) -> list[float]:

@@ -5,7 +5,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from typing import Final
 
-from app.files.readings import reading_deg
+from app.files.readings import reading_deg, required_text
 from app.files.wording import printable
 from app.plan.dry_run import DryRun
 from geometry.assess import Pose, exact_pose
@@ -132,7 +132,7 @@ def _flags(gap: MeasuredGap, pose: Pose, scene: Scene) -> list[str]:
             "find out why before anything is treated"
         )
     if gap.measured_mm < required_mm:
-        flags.append(f"less than the required {math.ceil(10.0 * required_mm - 1e-6) / 10.0:.1f} mm")
+        flags.append(f"less than the required {required_text(required_mm)}")
     return flags
 
 

@@ -2,9 +2,10 @@
 
 from typing import Final
 
+from app.files.readings import clearance_text
 from app.plan.dry_run import DO_NOT_RUN, NOT_PERMITTED, DryRun, FieldRow, MoveRow
 from app.plan.dry_run_places import Place
-from app.plan.dry_run_words import Turn, clearance_text, point_text
+from app.plan.dry_run_words import Turn, point_text
 from app.plan_files.sheet_page import BODY, GREY, INK, SMALL, Page, Pages, line_mm, wrapped
 
 _PAD: Final = 1.3

@@ -3,7 +3,8 @@
 from collections.abc import Sequence
 from typing import Final
 
-from app.plan.dry_run_words import angle_text, clearance_text
+from app.files.readings import clearance_text
+from app.plan.dry_run_words import angle_text
 from app.plan.gaps import GapRow
 from app.plan_files.sheet_page import BODY, INK, SMALL, Pages, line_mm, wrapped
 

@@ -5,7 +5,7 @@ from enum import Enum
 from PySide6.QtCore import Qt, Signal
 from PySide6.QtWidgets import QHBoxLayout, QLabel, QSizePolicy, QWidget
 
-from app.plan.dry_run_words import clearance_text, required_text
+from app.files.readings import clearance_text, required_text
 from app.window.angle_box import AngleBox
 from app.window.theme import Theme
 from geometry.assess import Pose

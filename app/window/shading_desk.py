@@ -9,8 +9,8 @@ from numpy.typing import NDArray
 from PySide6.QtCore import QObject, QTimer, Signal
 
 from app.clearance_scale import EDGES_MM
+from app.files.readings import clearance_text
 from app.jobs import Job, Publish
-from app.plan.dry_run_words import clearance_text
 from app.window.desk import Desk
 from app.window.workspace import Workspace
 from geometry.frames import R_fixed_gantry, R_fixed_turntable, normalised_deg

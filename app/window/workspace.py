@@ -6,8 +6,8 @@ from PySide6.QtCore import Qt, QTimer, Signal
 from PySide6.QtWidgets import QSplitter, QStackedWidget, QTabWidget, QVBoxLayout, QWidget
 
 from app.document.document import Document
+from app.files.readings import clearance_text
 from app.live import Stage
-from app.plan.dry_run_words import clearance_text
 from app.window.banner import Banner
 from app.window.chart.angle_chart import AngleChart
 from app.window.chart.clearance_curve import ClearanceCurve

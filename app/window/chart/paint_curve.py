@@ -10,7 +10,7 @@ from PySide6.QtCore import QPointF, QRectF, QSizeF, Qt
 from PySide6.QtGui import QColor, QFont, QFontMetricsF, QImage, QPainter, QPainterPath, QPen
 
 from app.clearance_scale import EDGE_COLOURS, places
-from app.plan.dry_run_words import required_text
+from app.files.readings import clearance_text, required_text
 from app.window.chart.legend import LegendItem, line_item, paint_items, permitted_item, state_item
 from app.window.chart.paint import cased_stroke, cased_text, dashed, font_of, polygon_of, texture, texture_brush
 from app.window.chart.paint_axes import (
@@ -244,7 +244,7 @@ def _paint_least(painter: QPainter, frame: Frame, found: ClearanceMap, theme: Th
     font = font_of(frame.font, 1.0, bold=True)
     metrics = QFontMetricsF(font)
     where = angle_words(angle) if np.ptp(clearance[seen]) > _SAME_MM else "every angle"
-    text = f"least {math.floor(least * 10.0 + 1e-6) / 10.0:.1f} mm at {where}"
+    text = f"least {clearance_text(least)} at {where}"
     at = QPointF(frame.across.pixel(angle), frame.upwards.pixel(least))
     half = metrics.horizontalAdvance(text) / 2.0 + 6.0
     x = min(max(at.x(), frame.plot.left() + half), frame.plot.right() - half)

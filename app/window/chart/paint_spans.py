@@ -8,7 +8,7 @@ from PySide6.QtCore import QPointF, QRectF, QSizeF, Qt
 from PySide6.QtGui import QColor, QFont, QFontMetricsF, QPainter, QPainterPath, QPen
 
 from app.clearance_scale import EDGE_COLOURS
-from app.files.readings import number_text
+from app.files.readings import clearance_text, number_text
 from app.window.chart.paint import dashed, font_of, texture_brush
 from app.window.chart.paint_axes import fitting
 from app.window.chart.reading import angle_words
@@ -206,7 +206,7 @@ def least_words(span: Span) -> str:
     """Return the proved clearance, rounded down, so that it stays a bound."""
     if not math.isfinite(span.least_clearance_mm):
         return "–"
-    return f"{math.floor(span.least_clearance_mm * 10.0 + 1e-6) / 10.0:.1f}"
+    return clearance_text(span.least_clearance_mm).removesuffix(" mm")
 
 
 def _place(strip: Strip, size: QSizeF) -> Place:

@@ -8,8 +8,7 @@ from PySide6.QtCore import QEvent, QPointF, QSize, QSizeF, Qt, Signal
 from PySide6.QtGui import QHelpEvent, QKeyEvent, QMouseEvent, QPainter, QPaintEvent
 from PySide6.QtWidgets import QSizePolicy, QToolTip, QWidget
 
-from app.files.readings import number_text
-from app.plan.dry_run_words import required_text
+from app.files.readings import number_text, required_text
 from app.window.chart.paint_spans import Strip, StripLayout, height_of, least_words
 from app.window.chart.reading import IEC, angle_words, label_of
 from app.window.theme import LIGHT, Theme

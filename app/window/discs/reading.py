@@ -6,7 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from app.files.readings import OwnScales, own_scales
+from app.files.readings import OwnScales, clearance_text, own_scales
 from app.window.chart.reading import IEC, NOT_PROVED_YET, angle_words
 from geometry.directions.axes import direction_words, directions_patient
 from geometry.directions.field import DirectionField, Reached
@@ -72,7 +72,7 @@ class DirectionReading:
             return f"no distance, {state}"
         if not math.isfinite(pair.clearance_mm):
             return f"nothing near, {state}"
-        return f"{math.floor(pair.clearance_mm * 10.0 + 1e-6) / 10.0:.1f} mm, {state}"
+        return f"{clearance_text(pair.clearance_mm)}, {state}"
 
 
 def reading_of(field: DirectionField, direction: Array, pose_deg: tuple[float, float]) -> DirectionReading:

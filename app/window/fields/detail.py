@@ -18,8 +18,8 @@ from PySide6.QtWidgets import (
     QWidget,
 )
 
-from app.files.readings import OwnScales
-from app.plan.dry_run_words import angle_text, clearance_text, turn_of
+from app.files.readings import OwnScales, clearance_text
+from app.plan.dry_run_words import angle_text, turn_of
 from app.plan.fitting import NOTHING
 from app.plan.gaps import GapPlace, GapRow
 from app.window.fields.gaps import GapsTable

@@ -7,7 +7,8 @@ from typing import Final
 from PySide6.QtCore import Signal
 from PySide6.QtWidgets import QGridLayout, QHBoxLayout, QLabel, QLineEdit, QVBoxLayout, QWidget
 
-from app.plan.dry_run_words import angle_text, clearance_text
+from app.files.readings import clearance_text
+from app.plan.dry_run_words import angle_text
 from app.plan.gaps import GapPlace, GapRow, MeasuredGap
 from app.window.setup.number import NumberBox
 from app.window.theme import LIGHT, Theme

@@ -17,7 +17,8 @@ from PySide6.QtGui import (
 )
 from PySide6.QtWidgets import QSizePolicy, QWidget
 
-from app.plan.dry_run_words import angle_text, clearance_text
+from app.files.readings import clearance_text
+from app.plan.dry_run_words import angle_text
 from app.plan.timeline_clearance import ClearanceOverTime, next_tight
 from app.window.chart.view import Window
 from app.window.fields.time_frame import TimeFrame, time_frame

@@ -9,7 +9,7 @@ from PySide6.QtCore import QPointF, QRectF, Qt
 from PySide6.QtGui import QColor, QFontMetricsF, QImage, QPainter, QPainterPath, QPen, QPolygonF
 
 from app.clearance_scale import places
-from app.plan.dry_run_words import clearance_text
+from app.files.readings import clearance_text
 from app.plan.timeline_clearance import TightPlace
 from app.window.chart.paint import cased_stroke, cased_text, dashed, font_of, polygon_of, texture
 from app.window.chart.paint_axes import fitting

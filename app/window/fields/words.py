@@ -9,8 +9,8 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Final, Literal
 
-from app.files.readings import OwnScales, own_scales
-from app.plan.dry_run_words import Which, angle_text, clearance_text, leg_texts, required_text, rounded_up, turn_of
+from app.files.readings import OwnScales, clearance_text, own_scales, required_text, rounded_up
+from app.plan.dry_run_words import Which, angle_text, leg_texts, turn_of
 from geometry.legs import Point
 from geometry.machine import Readout
 from geometry.paths import Approach

@@ -7,7 +7,7 @@ from PySide6.QtCore import QEvent, QPointF, QRectF, QSize, Qt
 from PySide6.QtGui import QColor, QHelpEvent, QPainter, QPaintEvent, QPen
 from PySide6.QtWidgets import QSizePolicy, QToolTip, QWidget
 
-from app.plan.dry_run_words import required_text
+from app.files.readings import required_text
 from app.window.theme import LIGHT, Theme
 from geometry.setup import Required
 

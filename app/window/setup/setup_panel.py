@@ -8,7 +8,7 @@ from PySide6.QtWidgets import QLabel, QScrollArea, QSizePolicy, QVBoxLayout, QWi
 from app.document import patient_fields, setup_fields
 from app.document.document import Document
 from app.document.fields import NumberField
-from app.plan.dry_run_words import required_text
+from app.files.readings import required_text
 from app.window.setup.devices import DevicesEditor
 from app.window.setup.fitted import FittedEditor, fitted_summary
 from app.window.setup.group import Group

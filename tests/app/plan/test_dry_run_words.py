@@ -4,16 +4,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from app.files.readings import OwnScales
-from app.plan.dry_run_words import (
-    angle_text,
-    clearance_text,
-    leg_texts,
-    point_text,
-    required_text,
-    rounded_up,
-    turn_of,
-)
+from app.files.readings import OwnScales, clearance_text, required_text, rounded_up
+from app.plan.dry_run_words import angle_text, leg_texts, point_text, turn_of
 from geometry.machine import Readout
 
 IEC = OwnScales(None, None)
